@@ -1,0 +1,1 @@
+"""A wire contract for robot modules, and a bench that judges any build against it."""
