@@ -1,0 +1,51 @@
+"""What a run of the suite can be told, and who may watch it."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Protocol
+
+from protobench.judge import CaseRecord
+from protobench.links import Link
+
+LinkOpener = Callable[[], Link]
+
+
+@dataclass(slots=True)
+class RunOptions:
+    """Options of one run.
+
+    ``link``: link address as text, or None for the embedded emulated module in virtual time.
+    ``address``: the module's unicast address, or None to find it by a probe.
+    ``only``: a pytest ``-k``-like expression over case ids and areas, or None for all.
+    ``level``: ``required`` or ``recommended`` (which includes the required ones).
+    ``attended``: someone stands by, so what can move hardware may be sent.
+    ``opener``: opens the link instead of ``link``; the text then only names it.
+    """
+
+    link: str | None = None
+    address: int | None = None
+    ics: Path | None = None
+    only: str | None = None
+    level: str = "required"
+    seed: int = 1
+    out: Path | None = None
+    attended: bool = False
+    virtual: bool | None = None
+    opener: LinkOpener | None = None
+    cases: tuple[str, ...] = field(default_factory=tuple)
+
+
+class Observer(Protocol):
+    """Told of a run's progress as it happens."""
+
+    def selected(self, count: int) -> None:
+        """``count`` cases will be judged."""
+
+    def case_begins(self, case_id: str, index: int) -> None:
+        """Case number ``index``, from 0, begins."""
+
+    def case_ends(self, record: CaseRecord) -> None:
+        """A case has its verdict."""
