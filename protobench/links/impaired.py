@@ -18,8 +18,8 @@ _SWALLOWED_LIMIT = 1000  # arrivals that come to nothing before a receive past i
 class ImpairedLink(Link):
     """Passes units through two impaired lines, on the inner link's clock; repeatable from ``seed``.
 
-    On a stream a unit passes when its delimiter has come: a half frame that is sent through waits for its other
-    half (HOLD makes one). Nothing moves between calls: what falls due leaves in the next call that can send.
+    On a stream a unit passes when its delimiter has come: a half frame sent through waits for its other half
+    (HOLD makes one). Nothing moves between calls: what falls due leaves in the next call that can send.
     ``log`` holds what was done, the latest 100,000 entries. Closing it closes the inner link.
     """
 

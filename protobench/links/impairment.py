@@ -39,8 +39,8 @@ class Impairment:
 
     ``frames``: indices of units in this direction, from 0; None for all. ``where(index, unit)``: as you like.
     ``delay_ns``: DELAY, how long (others may overtake); REPEAT, between copies; HOLD, from the first part to
-    the rest; REORDER, the longest wait for others to overtake. ``count``: REPEAT, further copies; REORDER, how
-    many overtake; CORRUPT, bits flipped. ``split``: HOLD, bytes in the first part (None: half).
+    the rest; REORDER, the longest wait for others to overtake. ``count``: REPEAT, further copies; REORDER,
+    how many overtake; CORRUPT, bits flipped. ``split``: HOLD, bytes in the first part (None: half).
     """
 
     action: Action

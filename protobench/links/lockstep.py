@@ -53,7 +53,11 @@ class LockstepPeer:
         self._reading.register(self._child.stdout_fd, select.POLLIN)
         self._reading.register(self._child.stderr_fd, select.POLLIN)
         self._stderr_open = True
-        self.advance(start_us)
+        try:
+            self.advance(start_us)
+        except BaseException:
+            self.stop()
+            raise
 
     def feed(self, now_us: int, data: bytes) -> None:
         for start in range(0, len(data), _FEED_LIMIT_BYTES):

@@ -14,7 +14,7 @@ class Peer(Protocol):
     """A module that does no input or output and reads no clock. Times are in us and never go back."""
 
     def feed(self, now_us: int, data: bytes) -> None:
-        """Bytes arrived at ``now_us``. The peer's own earlier deadlines come first; equal ones as it sees fit."""
+        """Bytes arrived at ``now_us``. The peer's earlier deadlines come first, equal ones as it sees fit."""
 
     def advance(self, now_us: int) -> None:
         """Do all that is due at ``now_us`` or before."""
