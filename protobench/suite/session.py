@@ -1,0 +1,179 @@
+"""One run against one module: open, discover, judge case by case, whoever asks (command line or pytest)."""
+
+from __future__ import annotations
+
+import platform
+import shlex
+import time
+from typing import Any
+
+from protobench import __version__
+from protobench.contract import Contract, load_contract, parse_condition
+from protobench.judge import (
+    NOT_APPLICABLE,
+    CaseRecord,
+    CaseVerdict,
+    NotApplicable,
+    RunRecord,
+    Verdict,
+)
+from protobench.links import Link, LinkError, open_link
+from protobench.suite.bench import Bench
+from protobench.suite.case import CaseInfo
+from protobench.suite.options import RunOptions
+from protobench.suite.port import Log
+from protobench.suite.targets import embedded_link
+from protobench.wire import Codec, load_codec
+
+DETAIL_LINES = 120
+
+
+class NeedsAttendance(Exception):  # noqa: N818 - says what is missing
+    """The module may move matter, and nobody said that someone stands by. The message says why and how."""
+
+
+class Session:
+    """Judges cases against one module. Use as a context manager; ``log`` takes every frame."""
+
+    def __init__(self, options: RunOptions, log: Log | None = None) -> None:
+        self.options = options
+        self.contract: Contract = load_contract()
+        self.codec: Codec = load_codec(self.contract)
+        self._log = log
+        self.bench = self._open()
+
+    def __enter__(self) -> Session:
+        return self
+
+    def __exit__(self, *exception: object) -> None:
+        self.close()
+
+    def close(self) -> None:
+        self.bench.port.link.close()
+
+    # ------------------------------------------------------------ opening
+
+    def _open(self) -> Bench:
+        link = self._open_link()
+        try:
+            if not link.loopback and not self.options.attended:
+                raise NeedsAttendance(
+                    f"{link.name} is a serial device or another host: what is behind it may move. "
+                    "Nothing was sent. Give --attended when someone stands by with an independent power cut."
+                )
+            bench = Bench(link, self.contract, self.codec, self.options.seed, self._log)
+            bench.discover(self.options.address)
+            if not bench.facts.emulated and not self.options.attended:
+                raise NeedsAttendance(
+                    f"module {bench.address} on {link.name} describes itself as physical. Nothing that can move it "
+                    "was sent. Give --attended when someone stands by with an independent power cut."
+                )
+        except BaseException:
+            link.close()
+            raise
+        return bench
+
+    def _open_link(self) -> Link:
+        if self.options.opener is not None:
+            return self.options.opener()
+        if self.options.link is None:
+            return embedded_link(self.options.seed)
+        return open_link(self.options.link, virtual=bool(self.options.virtual))
+
+    def record(self) -> RunRecord:
+        """A record without cases: who is judged, and where."""
+        description = self.bench.facts.description
+        iut: dict[str, Any] = {
+            name: value.hex() if isinstance(value, bytes) else value for name, value in description.items()
+        }
+        iut["address"] = self.bench.address
+        iut["items"] = sorted(self.bench.facts.items)
+        environment: dict[str, Any] = {
+            "bench": __version__,
+            "link": self.bench.port.link.name,
+            "time": "virtual" if self.bench.port.link.virtual else "real",
+            "python": platform.python_version(),
+            "system": f"{platform.system()} {platform.machine()}",
+        }
+        return RunRecord(f"{self.contract.name} {self.contract.version}", self.options.seed, iut, environment)
+
+    # ------------------------------------------------------------ judging
+
+    def judge(self, info: CaseInfo) -> CaseRecord:
+        """Run one case with preamble and postamble and say how it went. Never raises what a module can cause."""
+        begin = time.monotonic()
+        verdict, reason, detail = self._verdict(info)
+        return CaseRecord(
+            id=info.id,
+            level=info.level,
+            case_class=info.case_class,
+            purpose=info.purpose,
+            clauses=info.clauses,
+            verdict=verdict,
+            reason=reason,
+            duration_s=round(time.monotonic() - begin, 6),
+            detail=detail,
+            replay="" if verdict in ("pass", NOT_APPLICABLE) else self._replay(info),
+        )
+
+    def _verdict(self, info: CaseInfo) -> tuple[str, str, str]:
+        missing = parse_condition(info.needs).why_not(self.bench.facts.items) if info.needs else None
+        if missing:
+            return NOT_APPLICABLE, missing, ""
+        found: list[tuple[Verdict, str]] = []
+        try:
+            self._attempt(lambda: self.bench.begin(info.id), found)
+            if not found:
+                self._attempt(lambda: info.function(self.bench), found)
+            if not any(verdict is Verdict.ERROR for verdict, _ in found):
+                self._attempt(self.bench.end, found, "postamble: ")
+            found += [
+                (Verdict.FAIL, f"{violation.clause}: {violation.reason}")
+                for violation in self.bench.port.watch.violations
+            ]
+        except NotApplicable as why:
+            return NOT_APPLICABLE, str(why), ""
+        except LinkError as error:
+            found.append((Verdict.FAIL, f"LOD-02: the link to the module ended: {error}"))
+            detail = self._detail()
+            self._reopen()
+            return Verdict.FAIL.word, found[0][1], detail
+        if not found:
+            return Verdict.PASS.word, "", ""
+        worst = max(verdict for verdict, _ in found)
+        reasons = [reason for verdict, reason in found if verdict is worst]
+        return worst.word, reasons[0], self._detail(reasons[1:])
+
+    def _attempt(self, step: Any, found: list[tuple[Verdict, str]], prefix: str = "") -> None:
+        try:
+            step()
+        except CaseVerdict as verdict:
+            found.append((verdict.verdict, prefix + str(verdict)))
+            if verdict.detail:
+                found[-1] = (verdict.verdict, f"{prefix}{verdict}\n{verdict.detail}")
+        except (LinkError, NotApplicable):
+            raise
+        except Exception as error:  # noqa: BLE001 - a defect of the bench or of a case is a verdict of its own
+            found.append((Verdict.ERROR, f"{prefix}{type(error).__name__}: {error}"))
+
+    def _detail(self, more: list[str] | None = None) -> str:
+        lines = [f"also: {reason}" for reason in more or []]
+        transcript = self.bench.port.transcript
+        if len(transcript) > DETAIL_LINES:
+            lines.append(f"... {len(transcript) - DETAIL_LINES} earlier frames are in the conformance log")
+        return "\n".join(lines + transcript[-DETAIL_LINES:])
+
+    def _reopen(self) -> None:
+        """The far end went away: the next case gets a new link. What cannot be opened again ends the run."""
+        self.close()
+        self.bench = self._open()
+
+    def _replay(self, info: CaseInfo) -> str:
+        command = ["protobench", "check"]
+        if self.options.link is not None:
+            command += ["--link", self.options.link]
+        command += ["--address", str(self.bench.address), "--seed", str(self.options.seed), "--only", info.id]
+        if self.options.attended:
+            command.append("--attended")
+        return shlex.join(command)
+
