@@ -1,4 +1,4 @@
-"""The careful way to read and check a message: slow beside the straight-line functions, and able to say why."""
+"""The careful way to read and check a message: slow beside the straight-line functions, but it says why."""
 
 from __future__ import annotations
 

@@ -5,7 +5,6 @@ from __future__ import annotations
 import struct
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
-from typing import Any
 
 from protobench.wire.crc import CrcFunction
 from protobench.wire.errors import Dropped, EncodingError
@@ -91,14 +90,17 @@ class FrameLayout:
 
 
 class FrameCodec:
-    """Packs and unpacks bare frames of one layout with one check sequence."""
+    """Packs and unpacks bare frames of one layout with one check sequence.
+
+    ``unpack(bare)`` → Frame, or Dropped with reason too-long, too-short or crc.
+    """
 
     def __init__(self, layout: FrameLayout, crc: CrcFunction) -> None:
         self.layout = layout
         self.crc = crc
-        self.header = struct.Struct(layout.struct_format())
-        self._check = struct.Struct(">" + _FORMATS[layout.check_size])
-        self.unpack = _make_unpack(layout, self.header, self._check, crc)
+        self.pack_header = struct.Struct(layout.struct_format()).pack
+        self.pack_check = struct.Struct(">" + _FORMATS[layout.check_size]).pack
+        self.unpack = self._make_unpack()
 
     def pack(
         self,
@@ -113,90 +115,74 @@ class FrameCodec:
         version: int | None = None,
         body_length: int | None = None,
     ) -> bytes:
-        """Return one bare frame; ``version`` and ``body_length`` are the true ones unless a test wants a lie.
+        """Return any frame with a good check sequence, around any body, however long.
 
-        Raises EncodingError for a header value that does not fit, and for a body that would make the frame
-        longer than any receiver takes; a body longer than a sender of this version may send is the caller's
-        business.
+        ``version`` and ``body_length`` are the true ones unless given. EncodingError names a header field
+        that cannot hold its value.
         """
-        layout = self.layout
-        if len(body) > layout.frame_size_max - layout.frame_size_min:
-            raise EncodingError("frame", "body", body, f"{len(body)} bytes do not fit in a frame")
         if version is None:
-            version = layout.version
+            version = self.layout.version
         if body_length is None:
             body_length = len(body)
+        header = (version, kind, flags, body_length, source, destination, session, number)
         try:
-            header = self.header.pack(version, kind, flags, body_length, source, destination, session, number)
+            data = self.pack_header(*header) + body
         except struct.error as error:
-            values = (version, kind, flags, body_length, source, destination, session, number)
-            raise _misfit(layout, values, error) from None
-        data = header + body
-        return data + self._check.pack(self.crc(data))
+            raise self._misfit(header, error) from None
+        return data + self.pack_check(self.crc(data))
 
     def check_length(self, frame: Frame) -> Dropped | None:
         """Return why the frame is dropped for its length field, or None when the field is right."""
         found = len(frame.body)
-        if frame.body_length == found and found <= self.layout.body_size_max:
-            return None
         most = self.layout.body_size_max
-        detail = f"length field {frame.body_length}, body of {found} bytes, at most {most}"
-        return Dropped("length", detail, frame.body)
+        if frame.body_length == found and found <= most:
+            return None
+        return Dropped(
+            "length", f"length field {frame.body_length}, body of {found} bytes, at most {most}", frame.body
+        )
 
+    def _misfit(self, values: Sequence[object], error: struct.error) -> EncodingError:
+        for field, value in zip(self.layout.fields, values, strict=True):
+            most = (1 << 8 * field.size) - 1
+            if not isinstance(value, int) or not 0 <= value <= most:
+                return EncodingError("frame", field.name, value, f"wanted an integer 0..{most}")
+        return EncodingError("frame", "", tuple(values), str(error))
 
-def _misfit(layout: FrameLayout, values: Sequence[object], error: struct.error) -> EncodingError:
-    for field, value in zip(layout.fields, values, strict=True):
-        most = (1 << 8 * field.size) - 1
-        if not isinstance(value, int) or not 0 <= value <= most:
-            return EncodingError("frame", field.name, value, f"an integer 0..{most}")
-    return EncodingError("frame", "", tuple(values), str(error))
+    def _make_unpack(self) -> Callable[[bytes], Frame | Dropped]:
+        # One reader for each size of a frame: header, body and check sequence in one call.
+        layout, crc = self.layout, self.crc
+        header, check = layout.struct_format(), _FORMATS[layout.check_size]
+        sizes = range(layout.frame_size_min, layout.frame_size_max + 1)
+        overhead = layout.header_size + layout.check_size
+        readers = {size: struct.Struct(f"{header}{size - overhead}s{check}").unpack for size in sizes}
+        check_size = layout.check_size
 
+        def unpack(data: bytes) -> Frame | Dropped:
+            reader = readers.get(len(data))
+            if reader is None:
+                return self._drop_size(data)
+            frame = Frame()
+            (
+                frame.version,
+                frame.kind,
+                frame.flags,
+                frame.body_length,
+                frame.source,
+                frame.destination,
+                frame.session,
+                frame.number,
+                frame.body,
+                told,
+            ) = reader(data)
+            found = crc(data[:-check_size])
+            if found == told:
+                return frame
+            return Dropped("crc", f"frame says {told:08x}, its bytes make {found:08x}", data)
 
-_UNPACK = """
-def unpack(data):
-    size = len(data)
-    if {frame_size_min} <= size <= {frame_size_max}:
-        covered = data[:-{check_size}]
-        if read_check(data, size - {check_size})[0] == crc(covered):
-            frame = new(Frame)
-            {targets} = read_header(data)
-            frame.body = covered[{header_size}:]
-            return frame
-    return drop(data)
-"""
+        return unpack
 
-
-def _make_unpack(
-    layout: FrameLayout, header: struct.Struct, check: struct.Struct, crc: CrcFunction
-) -> Callable[[bytes], Frame | Dropped]:
-    """Return a function from bare bytes to a Frame, or to Dropped with reason too-long, too-short or crc."""
-
-    def drop(data: bytes) -> Dropped:
-        size = len(data)
-        if size > layout.frame_size_max:
-            detail = f"{size} bytes, at most {layout.frame_size_max}"
-            return Dropped("too-long", detail, data[: layout.frame_size_max + 1])
-        if size < layout.frame_size_min:
-            return Dropped("too-short", f"{size} bytes, at least {layout.frame_size_min}", data)
-        told = check.unpack_from(data, size - layout.check_size)[0]
-        found = crc(data[: -layout.check_size])
-        return Dropped("crc", f"frame says {told:08x}, its bytes make {found:08x}", data)
-
-    names: dict[str, Any] = {
-        "Frame": Frame,
-        "new": object.__new__,
-        "crc": crc,
-        "drop": drop,
-        "read_header": header.unpack_from,
-        "read_check": check.unpack_from,
-    }
-    source = _UNPACK.format(
-        targets=", ".join(f"frame.{field.name}" for field in layout.fields),
-        frame_size_min=layout.frame_size_min,
-        frame_size_max=layout.frame_size_max,
-        check_size=layout.check_size,
-        header_size=layout.header_size,
-    )
-    exec(compile(source, "<frame layout>", "exec"), names)  # noqa: S102  # our own template, filled from the contract
-    unpack: Callable[[bytes], Frame | Dropped] = names["unpack"]
-    return unpack
+    def _drop_size(self, data: bytes) -> Dropped:
+        size, least, most = len(data), self.layout.frame_size_min, self.layout.frame_size_max
+        if size > most:
+            return Dropped("too-long", f"{size} bytes, at most {most}", data[: most + 1])
+        return Dropped("too-short", f"{size} bytes, at least {least}", data)

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import re
+import struct
 from collections import namedtuple
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
@@ -14,19 +16,22 @@ from protobench.wire.body import unpack_body
 from protobench.wire.errors import EncodingError, FieldError
 from protobench.wire.examine import examine, has_type, in_range
 from protobench.wire.form import BodyLimits
+from protobench.wire.frames import FrameCodec
+from protobench.wire.patterns import kind_pattern
 from protobench.wire.specs import KindSpec, Presence, RecordSpec, class_name
 
 # Whatever unpacking, or looking into a body that is no map of the kind, can raise; the careful way says why.
-_FAILURES = (ValueError, TypeError, LookupError, AttributeError, OverflowError, msgpack.UnpackException)
+_FAILURES = (ValueError, TypeError, LookupError, AttributeError, OverflowError, struct.error)
 
 RecordClass = type[Any]
 
 
 class Message:
-    """Base of all message classes; fields are attributes named as in the contract, ``class`` being ``class_``.
+    """Base of all message classes; fields are attributes named as in the contract, ``class`` as ``class_``.
 
     A field that is absent is its default, or None where it has none. Sequences are tuples, records named
-    tuples, enumerations plain integers. Nothing is checked before the message is encoded.
+    tuples, enumerations plain integers. Nothing is checked before the message is encoded; a field that equals
+    its default is then left out.
     """
 
     __slots__ = ()
@@ -35,6 +40,12 @@ class Message:
     if TYPE_CHECKING:
 
         def __getattr__(self, name: str) -> Any: ...
+
+        def to_body(self) -> bytes:
+            """Return the canonical body; EncodingError names the field that cannot be sent."""
+
+        def to_frame(self, source: int, destination: int, session: int, number: int) -> bytes:
+            """Return the bare frame that carries this message; raises EncodingError."""
 
     def __repr__(self) -> str:
         fields = ", ".join(
@@ -45,9 +56,8 @@ class Message:
     def __eq__(self, other: object) -> bool:
         if type(self) is not type(other):
             return NotImplemented
-        return all(
-            getattr(self, spec.attribute) == getattr(other, spec.attribute) for spec in self.KIND.spec.fields
-        )
+        fields = self.KIND.spec.fields
+        return all(getattr(self, spec.attribute) == getattr(other, spec.attribute) for spec in fields)
 
     __hash__ = None  # type: ignore[assignment]  # mutable
 
@@ -67,24 +77,26 @@ class Examined:
 
 
 class MessageKind:
-    """One kind: its description, its class and its codec.
+    """One kind: its description, its message class and its decoder.
 
-    ``encode(message)`` returns the canonical body and raises EncodingError; a field that equals its default
-    is left out. ``decode(body, many=False)`` returns a message and raises BodyError or the first FieldError
-    in the order of judging; ``many`` says that the frame went to a group or to all.
+    ``decode(body, many=False)`` returns a message and raises BodyError or the first FieldError in the order
+    of judging; ``many`` says that the frame went to a group or to all.
     """
 
-    def __init__(self, spec: KindSpec, limits: BodyLimits, records: Mapping[str, RecordClass]) -> None:
+    def __init__(
+        self, spec: KindSpec, frames: FrameCodec, limits: BodyLimits, records: Mapping[str, RecordClass]
+    ) -> None:
         self.spec = spec
         self.name = spec.name
         self.code = spec.code
+        self._frames = frames
         self._limits = limits
         self._records = records
         self._fields = {field.attribute: field for field in spec.fields}
+        self._names = self._names_in_view()
         self.message_class = self._make_class()
-        self.encode: Callable[[Message], bytes]
-        self.decode: Callable[..., Message]
-        self._make_functions()
+        self._names["Message"] = self.message_class
+        self.decode: Callable[..., Message] = self._build(codegen.decode_source(spec), "decode")
 
     def __repr__(self) -> str:
         return f"MessageKind({self.name!r}, {self.code:#04x})"
@@ -111,7 +123,7 @@ class MessageKind:
             raise examined.problems[0]
         return examined.message
 
-    def _careful_encode(self, message: Message) -> bytes:
+    def _careful_body(self, message: Message) -> bytes:
         """Say which field cannot be sent. Integers of another type, such as an IntEnum's, are made plain."""
         values: dict[int, Any] = {}
         for spec in self.spec.fields:
@@ -138,34 +150,47 @@ class MessageKind:
             record._make(row) if isinstance(row, list | tuple) and len(row) == size else row for row in value
         )
 
-    def _make_class(self) -> type[Message]:
-        names: codegen.Namespace = {}
-        init = codegen.build(
-            codegen.init_source(self.spec.fields), names, "__init__", f"<message {self.name}>"
+    def _careful_frame(
+        self, message: Message, source: int, destination: int, session: int, number: int
+    ) -> bytes:
+        body = self._careful_body(message)
+        return self._frames.pack(
+            self.code, body, source=source, destination=destination, session=session, number=number
         )
-        body = {
-            "__slots__": tuple(self._fields),
-            "__init__": init,
-            "KIND": self,
-            "__doc__": f"Message {self.name}.",
-        }
-        return type(class_name(self.name), (Message,), body)
 
-    def _make_functions(self) -> None:
-        packer = msgpack.Packer(autoreset=True)
+    def _make_class(self) -> type[Message]:
+        version = self._frames.layout.version
+        namespace = {
+            "__slots__": tuple(self._fields),
+            "__doc__": f"Message {self.name}.",
+            "__init__": self._build(codegen.init_source(self.spec.fields), "__init__"),
+            "to_body": self._build(codegen.to_body_source(self.spec), "to_body"),
+            "to_frame": self._build(codegen.to_frame_source(self.spec, version), "to_frame"),
+            "KIND": self,
+        }
+        return type(class_name(self.name), (Message,), namespace)
+
+    def _build(self, source: str, wanted: str) -> Any:
+        return codegen.build(source, self._names, wanted, f"<message {self.name}>")
+
+    def _names_in_view(self) -> codegen.Namespace:
         names: codegen.Namespace = {
-            "pack": packer.pack,
+            "pack": msgpack.Packer(autoreset=True).pack,
             "unpack": msgpack.unpackb,
+            "match": re.compile(kind_pattern(self.spec), re.DOTALL).fullmatch,
             "new": object.__new__,
-            "Message": self.message_class,
-            "records": self._records,
+            "pack_header": self._frames.pack_header,
+            "pack_check": self._frames.pack_check,
+            "crc": self._frames.crc,
             "failures": _FAILURES,
-            "careful_encode": self._careful_encode,
+            "careful_body": self._careful_body,
+            "careful_frame": self._careful_frame,
             "careful_decode": self._careful_decode,
         }
-        origin = f"<message {self.name}>"
-        self.encode = codegen.build(codegen.encode_source(self.spec, names), names, "encode", origin)
-        self.decode = codegen.build(codegen.decode_source(self.spec, names), names, "decode", origin)
+        for field in self.spec.fields:
+            if field.record is not None:
+                names[f"rows_{field.attribute}"] = self._records[field.record.name]._make
+        return names
 
 
 def make_record(spec: RecordSpec) -> RecordClass:
