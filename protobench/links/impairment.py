@@ -69,9 +69,8 @@ class Impairment:
                 raise ValueError(f"impairment {self.action.value}: {name} {value!r} {rule}")
 
     def strikes(self, index: int, unit: bytes, rng: random.Random) -> bool:
-        drawn = (
-            rng.random() < self.probability
-        )  # always drawn, so that one rule does not shift the luck of the next
+        # Drawn for every unit, so that one condition does not shift the luck of the rules after it.
+        drawn = rng.random() < self.probability
         return (
             drawn
             and (self.frames is None or index in self.frames)
@@ -245,9 +244,7 @@ class Line:
         leaving = []
         while self._waiting and self._waiting[0][0] <= now_ns:
             due_ns, rank, _, piece = heapq.heappop(self._waiting)
-            if (
-                rank and due_ns < self._busy_until_ns
-            ):  # a held unit occupies the line until its rest has passed
+            if rank and due_ns < self._busy_until_ns:  # behind a held unit, until its rest has passed
                 self._wait(self._busy_until_ns, 1, piece)
                 continue
             leaving.append((due_ns, piece.data))

@@ -88,9 +88,8 @@ class MemoryLink(Link):
         return True
 
     def _collect(self, time_ns: int) -> None:
-        self._stamp_ns = max(
-            self._stamp_ns, time_ns
-        )  # deadlines are whole microseconds, sends may lie between
+        # Deadlines are whole microseconds; a send may lie between two, and stamps must not go back.
+        self._stamp_ns = max(self._stamp_ns, time_ns)
         for data in self._peer.take_output():
             self._inbox.put(Chunk(self._stamp_ns, data))
 

@@ -1,15 +1,15 @@
-"""Impairments: exactly what was planned happens, to the byte and the nanosecond, and again for the same seed."""
+"""Impairments: exactly what was planned happens, to the byte and the nanosecond, each time for one seed."""
 
 from __future__ import annotations
 
 import time
 
 import pytest
-from far_ends import EchoPeer
+from far_ends import QUIT, EchoPeer
 from hypothesis import given
 from hypothesis import strategies as st
 
-from protobench.links import Action, Direction, ImpairedLink, Impairment, MemoryLink
+from protobench.links import Action, Direction, ImpairedLink, Impairment, MemoryLink, PeerClosed
 
 IN, OUT = Direction.IN, Direction.OUT
 MS = 1_000_000
@@ -21,7 +21,7 @@ def frames(*indices):
 
 
 def run(plan, units=UNITS, seed=1, pause_us=1_000, until_us=100_000, delay_us=0):
-    """Send the units, a pause apart, to an echo; what it was fed and what came back (times in us), and the log."""
+    """Send the units, a pause apart, to an echo. What it was fed, what came back (times in us), the log."""
     peer = EchoPeer(delay_us)
     link = ImpairedLink(MemoryLink(peer), plan, seed)
     came = []
@@ -252,6 +252,19 @@ def test_delays_are_kept_in_real_time(connect):
     assert chunk.data == b"x\0"
     assert 30 * MS <= chunk.time_ns - started < 60 * MS
     assert 30 * MS <= time.monotonic_ns() - started < 80 * MS
+
+
+def test_what_is_in_the_line_when_the_far_end_goes_arrives_before_the_end_is_told(connect):
+    plan = [rule(Action.DELAY, IN, frames=frames(0), delay_ns=3600 * 10**9)]
+    link = ImpairedLink(connect("tcp"), plan, seed=1)
+    link.send(b"late\0", b"tail")
+    link.settle(link.clock.now_ns())
+    assert link.receive(link.clock.now_ns() + 50 * MS) is None
+    link.send(b"\0" + QUIT)
+    deadline_ns = link.clock.now_ns() + 2_000 * MS
+    assert [link.receive(deadline_ns).data for _ in range(2)] == [b"tail", b"late\0"]
+    with pytest.raises(PeerClosed):
+        link.receive(deadline_ns)
 
 
 @pytest.mark.parametrize(

@@ -246,9 +246,8 @@ def test_the_skeleton_on_the_page_is_a_sound_child(c_module):
 def test_the_example_on_the_page_is_what_the_program_answers(c_module):
     rows = re.findall(r"^\| (`[0-9A-F` ]+`) \| (`[0-9A-F` ]+`) \|$", LOCKSTEP_PAGE.read_text(), re.MULTILINE)
     records, replies = ([bytes.fromhex(re.sub("[` ]", "", row[column])) for row in rows] for column in (0, 1))
-    replies[2] = (
-        struct.pack(">I", 2) + b"\x01\0" + replies[2][4:]
-    )  # the small module echoes, the example does not
+    # The small module echoes; the one of the example does not.
+    replies[2] = struct.pack(">I", 2) + b"\x01\0" + replies[2][4:]
     assert len(rows) == 3
     run = subprocess.run([c_module], input=b"".join(records), capture_output=True, check=True, timeout=5)
     assert run.stdout == b"".join(replies)
