@@ -42,6 +42,10 @@ class ChildProcess:
         for fd in (self.stdin_fd, self.stdout_fd, self.stderr_fd):
             os.set_blocking(fd, False)
 
+    @property
+    def pid(self) -> int:
+        return self._process.pid
+
     def drain_stderr(self) -> bool:
         """Keep the tail of what is there, without waiting; False once the child can write no more."""
         try:

@@ -13,9 +13,11 @@ and for each record exactly one reply on its standard output:
 
 from __future__ import annotations
 
+import contextlib
 import os
 import select
 import struct
+import sys
 import time
 from typing import NoReturn
 
@@ -33,6 +35,32 @@ _LENGTH = struct.Struct(">I")
 _DEADLINE = struct.Struct(">Q")
 _FEED_LIMIT_BYTES = 0xFFFF
 _READ_BYTES = 1 << 16
+
+
+class _OneCpu:
+    """Within it, the calling thread runs on the one CPU that the child is kept to.
+
+    The two alternate strictly, and handing over on one CPU is several times faster than waking another. After
+    each record the thread has its CPUs back, so that nothing else in the process is bound. Does nothing where
+    the system has no such thing, or refuses it.
+    """
+
+    def __init__(self, pid: int) -> None:
+        self._shared: set[int] = set()
+        if sys.platform == "linux":
+            with contextlib.suppress(OSError):
+                self._before = os.sched_getaffinity(0)
+                shared = {sorted(self._before)[pid % len(self._before)]}
+                os.sched_setaffinity(pid, shared)
+                self._shared = shared
+
+    def __enter__(self) -> None:
+        if sys.platform == "linux" and self._shared:
+            os.sched_setaffinity(0, self._shared)
+
+    def __exit__(self, *_: object) -> None:
+        if sys.platform == "linux" and self._shared:
+            os.sched_setaffinity(0, self._before)
 
 
 class LockstepPeer:
@@ -53,6 +81,7 @@ class LockstepPeer:
         self._reading.register(self._child.stdout_fd, select.POLLIN)
         self._reading.register(self._child.stderr_fd, select.POLLIN)
         self._stderr_open = True
+        self._one_cpu = _OneCpu(self._child.pid)
         try:
             self.advance(start_us)
         except BaseException:
@@ -81,8 +110,9 @@ class LockstepPeer:
             raise self._broken.with_traceback(None)
         give_up = time.monotonic() + self._answer_limit_s
         try:
-            self._write(_RECORD.pack(op, now_us, len(data)) + data, give_up)
-            output, deadline_us = self._read_reply(give_up)
+            with self._one_cpu:
+                self._write(_RECORD.pack(op, now_us, len(data)) + data, give_up)
+                output, deadline_us = self._read_reply(give_up)
             if deadline_us < now_us:
                 self._fault(f"its reply names the deadline {deadline_us} us, which is in the past")
         except LinkError as error:
