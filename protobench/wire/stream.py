@@ -5,7 +5,10 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from protobench.wire.errors import Dropped
-from protobench.wire.stuffing import DELIMITER, StuffingError, unstuff
+from protobench.wire.stuffing import ALWAYS_CANONICAL_SIZE, DELIMITER, DecodeError, decode_short
+
+
+_WHY = "longer blocks can have two encodings"
 
 
 @dataclass(frozen=True, slots=True)
@@ -14,6 +17,10 @@ class StreamLimits:
 
     block_size_max: int
     discard_gap_ns: int
+
+    def __post_init__(self) -> None:
+        if self.block_size_max > ALWAYS_CANONICAL_SIZE:
+            raise ValueError(f"block_size_max {self.block_size_max}, at most {ALWAYS_CANONICAL_SIZE}: {_WHY}")
 
 
 class StreamDecoder:
@@ -102,16 +109,17 @@ def split_part(part: bytes, limits: StreamLimits) -> list[bytes | Dropped]:
 
 def _take_blocks(blocks: list[bytes], result: list[bytes | Dropped], size_max: int) -> None:
     """Append what whole blocks hold. Empty blocks are fill."""
+    append = result.append
     for block in blocks:
         if not block:
             continue
         if len(block) > size_max:
-            result.append(_too_long(block, size_max))
+            append(_too_long(block, size_max))
             continue
         try:
-            result.append(unstuff(block))
-        except StuffingError as error:
-            result.append(Dropped("stuffing", str(error), block))
+            append(decode_short(block))
+        except DecodeError as error:
+            append(Dropped("stuffing", f"not COBS: {error}", block))
 
 
 def _too_long(block: bytes, size_max: int) -> Dropped:

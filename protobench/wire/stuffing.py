@@ -2,13 +2,19 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 from cobs import cobs
 
 DELIMITER = b"\x00"
 
 # A block this short cannot hold a full group of 254 bytes, the only thing that COBS can write in two ways.
 # So whatever decodes at all is canonical, and the comparison is not made.
-_ALWAYS_CANONICAL_SIZE = 254
+ALWAYS_CANONICAL_SIZE = 254
+
+DecodeError: type[Exception] = cobs.DecodeError
+decode_short: Callable[[bytes], bytes] = cobs.decode
+"""For a block of 1 to ALWAYS_CANONICAL_SIZE bytes: its data; raises DecodeError."""
 
 
 class StuffingError(ValueError):
@@ -32,6 +38,6 @@ def unstuff(block: bytes) -> bytes:
         data: bytes = cobs.decode(block)
     except cobs.DecodeError as error:
         raise StuffingError(f"not COBS: {error}") from None
-    if len(block) > _ALWAYS_CANONICAL_SIZE and cobs.encode(data) != block:
+    if len(block) > ALWAYS_CANONICAL_SIZE and cobs.encode(data) != block:
         raise StuffingError("not the canonical encoding: a full last group is closed by one more")
     return data
