@@ -7,7 +7,6 @@ from dataclasses import dataclass
 from protobench.wire.errors import Dropped
 from protobench.wire.stuffing import ALWAYS_CANONICAL_SIZE, DELIMITER, DecodeError, decode_short
 
-
 _WHY = "longer blocks can have two encodings"
 
 
