@@ -33,7 +33,9 @@ class Bench:
     the case. ``raised``: fault codes whose condition the case raised.
     """
 
-    def __init__(self, link: Link, contract: Contract, codec: Codec, seed: int, log: Log | None = None) -> None:
+    def __init__(
+        self, link: Link, contract: Contract, codec: Codec, seed: int, log: Log | None = None
+    ) -> None:
         self.contract = contract
         self.language = Language(contract, codec)
         self.port = Port(link, self.language, log)

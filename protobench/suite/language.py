@@ -28,9 +28,7 @@ class Language:
     def __init__(self, contract: Contract, codec: Codec) -> None:
         self.contract = contract
         self.codec = codec
-        self._keys = {
-            kind.name: {field.name: field.key for field in kind.fields} for kind in contract.kinds
-        }
+        self._keys = {kind.name: {field.name: field.key for field in kind.fields} for kind in contract.kinds}
         self._codes = {kind.name: kind.code for kind in contract.kinds}
         self._names = {kind.code: kind.name for kind in contract.kinds}
         self._enums: dict[tuple[str, str], dict[int, str]] = {}
@@ -141,10 +139,12 @@ def canonical(value: Any) -> bytes:
 
 
 def _head(frame: Frame, kind: str) -> str:
-    odd = "" if frame.version == 1 and not frame.flags else f" version {frame.version} flags 0x{frame.flags:02x}"
-    return (
-        f"{kind} #{frame.number} 0x{frame.source:x} to 0x{frame.destination:x} session {frame.session:08x}{odd}"
+    odd = (
+        ""
+        if frame.version == 1 and not frame.flags
+        else f" version {frame.version} flags 0x{frame.flags:02x}"
     )
+    return f"{kind} #{frame.number} 0x{frame.source:x} to 0x{frame.destination:x} session {frame.session:08x}{odd}"
 
 
 def _shown(value: Any) -> str:

@@ -25,7 +25,9 @@ def pytest_addoption(parser: pytest.Parser) -> None:
     group = parser.getgroup("protobench", "judging a module by the protobench suite")
     group.addoption("--link", help="link to the module; without it an emulated one in virtual time is judged")
     group.addoption("--address", type=int, help="the module's address; without it a probe finds the only one")
-    group.addoption("--bench-seed", type=int, default=1, help="seed of everything random in the bench (default 1)")
+    group.addoption(
+        "--bench-seed", type=int, default=1, help="seed of everything random in the bench (default 1)"
+    )
     group.addoption("--attended", action="store_true", help="someone stands by: hardware may be moved")
 
 
@@ -60,7 +62,9 @@ def pytest_pyfunc_call(pyfuncitem: pytest.Function) -> bool | None:
     if record.verdict == NOT_APPLICABLE:
         pytest.skip(record.reason)
     if record.verdict != "pass":
-        pytest.fail(f"{record.verdict}: {record.reason}\n{record.detail}\nagain: {record.replay}", pytrace=False)
+        pytest.fail(
+            f"{record.verdict}: {record.reason}\n{record.detail}\nagain: {record.replay}", pytrace=False
+        )
     return True
 
 

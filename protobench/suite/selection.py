@@ -36,7 +36,9 @@ class _Reader:
         while position < len(text.rstrip()):
             match = _TOKEN.match(text, position)
             if match is None:
-                raise ValueError(f"expression {text!r}: {text[position]!r} at place {position + 1} has no meaning")
+                raise ValueError(
+                    f"expression {text!r}: {text[position]!r} at place {position + 1} has no meaning"
+                )
             tokens.append(match[1])
             position = match.end()
         return tokens
@@ -68,7 +70,9 @@ class _Reader:
                 raise ValueError(f"expression {self._text!r}: a closing parenthesis is missing")
             return found
         if self._next >= len(self._tokens) or self._tokens[self._next] in _WORDS:
-            raise ValueError(f"expression {self._text!r}: a word is missing after {' '.join(self._tokens[: self._next]) or 'the start'}")
+            raise ValueError(
+                f"expression {self._text!r}: a word is missing after {' '.join(self._tokens[: self._next]) or 'the start'}"
+            )
         self._next += 1
         return self._selects(self._tokens[self._next - 1])
 

@@ -176,4 +176,3 @@ class Session:
         if self.options.attended:
             command.append("--attended")
         return shlex.join(command)
-

@@ -134,7 +134,9 @@ class Tester:
         again = self.send_frame(sent.frame_bytes)
         if self.answer(again) is None:
             raise Failed(f"no answer to {sent.kind} #{sent.number}, sent twice", clause=clause)
-        raise Inconclusive(f"{sent.kind} #{sent.number} was answered only when sent again: a frame may have been lost")
+        raise Inconclusive(
+            f"{sent.kind} #{sent.number} was answered only when sent again: a frame may have been lost"
+        )
 
     def ask(self, kind: str | int, **options: Any) -> Received:
         """Send a request and return its answer."""
@@ -206,7 +208,9 @@ class Tester:
         """Confirm an outcome or a fault event."""
         return self.send("confirm", **{"epoch": event["epoch"], "event": event["event"], **options})
 
-    def ended(self, move: Sent, outcome: str, cause: str, clause: str, within_ms: float | None = None) -> Received:
+    def ended(
+        self, move: Sent, outcome: str, cause: str, clause: str, within_ms: float | None = None
+    ) -> Received:
         """The outcome of ``move``, which must say this; it is confirmed."""
         received = self.outcome(move, within_ms)
         self.confirm(received)
@@ -321,4 +325,3 @@ def answer_words(received: Received) -> str:
         return "accepted"
     key = received.get("key")
     return f"refused {received.get('reason')}" + ("" if key is None else f" with key {key}")
-

@@ -105,7 +105,9 @@ class Watch:
             self._violate("FRM-16", f"the module sent a frame that breaks the contract: {reading.problem}")
             return
         if self.own_addresses and frame.source not in self.own_addresses:
-            self._violate("ACK-02", f"source 0x{frame.source:x} is not the module's address in {reading.words}")
+            self._violate(
+                "ACK-02", f"source 0x{frame.source:x} is not the module's address in {reading.words}"
+            )
         check = self._CHECKS.get(reading.kind, Watch._answer)
         check(self, data, frame, reading, time_ns)
 
@@ -139,7 +141,8 @@ class Watch:
         for name, value in covered.items():
             if earlier[name] != value:
                 self._violate(
-                    "STA-07", f"two reports with change {key[1]} differ in {name}: {earlier[name]} and {value}"
+                    "STA-07",
+                    f"two reports with change {key[1]} differ in {name}: {earlier[name]} and {value}",
                 )
 
     def _outcome(self, data: bytes, frame: Frame, reading: Reading, time_ns: int) -> None:  # noqa: ARG002
