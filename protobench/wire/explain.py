@@ -45,22 +45,25 @@ class Explanation:
     problems: Sequence[BodyError | FieldError]
 
 
-def explain_frame(codec: Codec, data: bytes, many: bool = False) -> Explanation:
-    """Explain one bare frame; ``many``: whether its destination is a group or everyone."""
+def explain_frame(codec: Codec, data: bytes) -> Explanation:
+    """Explain one bare frame."""
     frame = codec.frames.unpack(data)
     header = _header_lines(codec, data)
     if isinstance(frame, Dropped):
         return Explanation("", header, (), frame, ())
     kind = codec.kinds_by_code.get(frame.kind)
     dropped = codec.frames.check_length(frame)
-    lines, problems = explain_body(codec, kind, frame.body, many)
+    lines, problems = explain_body(codec, kind, frame.body, codec.contract.is_multicast(frame.destination))
     return Explanation(kind.name if kind else "", header, lines, dropped, problems)
 
 
 def explain_body(
     codec: Codec, kind: MessageKind | None, body: bytes, many: bool = False
 ) -> tuple[Sequence[Line], Sequence[BodyError | FieldError]]:
-    """Explain one body, as a message of ``kind`` or, without one, as a bare map."""
+    """Explain one body, as a message of ``kind`` or, without one, as a bare map.
+
+    ``many``: whether it goes to a group or to all, where ``unicast`` fields are not examined.
+    """
     try:
         values = unpack_body(body, codec.body_limits)
     except BodyError as error:

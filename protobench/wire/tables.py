@@ -61,7 +61,7 @@ def stream_limits_of(contract: Contract) -> StreamLimits:
     """Return the bounds of the contract's streams."""
     return StreamLimits(
         block_size_max=contract.frame.layout.stuffed_size_max,
-        discard_gap_ns=int(contract.limits["half_frame_discard"].value) * _NS_PER_MS,
+        discard_gap_ns=int(contract.limit("half_frame_discard").value) * _NS_PER_MS,
     )
 
 
@@ -133,7 +133,5 @@ def _sizes(field: ContractField) -> tuple[int, int]:
     return field.items_min or 0, field.items_max or 0
 
 
-def _enumeration(contract: Contract, name: str | None) -> dict[int, str]:
-    if name is None:
-        return {}
-    return {number: text for text, number in contract.enums[name].values.items()}
+def _enumeration(contract: Contract, name: str | None) -> Mapping[int, str]:
+    return {} if name is None else contract.enum_names(name)
