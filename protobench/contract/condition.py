@@ -12,7 +12,7 @@ _RESERVED = ("and", "not", "or")
 
 
 class ConditionError(ValueError):
-    """A condition that cannot be read. ``text``: the whole; ``place``: index of the first character at fault."""
+    """A condition that cannot be read. ``text``: the whole; ``place``: index of the character at fault."""
 
     def __init__(self, text: str, place: int, rule: str) -> None:
         super().__init__(f"condition {text!r}, character {place + 1}: {rule}")
@@ -60,7 +60,8 @@ def parse_condition(text: str, known: Collection[str] | None = None) -> Conditio
     while True:
         place, name, plain = _term(text, words, place)
         if known is not None and name not in known:
-            raise ConditionError(text, words[place - 1][0], f"unknown name {name!r}; known: {', '.join(sorted(known))}")
+            rule = f"unknown name {name!r}; known: {', '.join(sorted(known))}"
+            raise ConditionError(text, words[place - 1][0], rule)
         if name in found[True] or name in found[False]:
             raise ConditionError(text, words[place - 1][0], f"{name!r} is named twice")
         found[plain].append(name)

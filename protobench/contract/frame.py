@@ -1,7 +1,8 @@
-"""Models of ``frame.toml``: frame layout, check sequence, stuffing, addresses, kind ranges, body form, links."""
+"""Models of ``frame.toml``: layout, check sequence, stuffing, addresses, kind ranges, body form, links."""
 
 from __future__ import annotations
 
+import itertools
 from typing import Literal, Self
 
 import pydantic as pd
@@ -40,7 +41,7 @@ class Layout(Model):
         place = 0
         for field in self.field:
             if field.offset != place:
-                raise ValueError(f"{field.name} stands at {field.offset}; the field before it ends at {place}")
+                raise ValueError(f"{field.name} stands at {field.offset}; the one before it ends at {place}")
             place += field.size
         expected = {
             "header_size": place,
@@ -100,9 +101,8 @@ class Addresses(Model):
 
     @pd.model_validator(mode="after")
     def _ranges_are_apart(self) -> Self:
-        rising = (self.unassigned, self.unicast_first, self.unicast_last, self.group_first, self.group_last)
-        rising += (self.any_controller, self.broadcast)
-        if any(low >= high for low, high in zip(rising, rising[1:], strict=False)):
+        rising = [getattr(self, name) for name in type(self).model_fields if name != "reason"]
+        if any(low >= high for low, high in itertools.pairwise(rising)):
             raise ValueError(f"the addresses must rise in the order of their keys, they are {rising}")
         return self
 
@@ -132,7 +132,7 @@ class KindRanges(Model):
         place = 1
         for name, (first, last) in self.items():
             if first != place or last < first:
-                raise ValueError(f"{name} is {first}..{last}; it must begin at {place} and not end before that")
+                raise ValueError(f"{name} is {first}..{last}; it must begin at {place} and not end before")
             place = last + 1
         if place != 0x100:
             raise ValueError(f"the ranges end at {place - 1}; they must end at 255")

@@ -166,7 +166,7 @@ class Contract:
     @property
     def condition_names(self) -> frozenset[str]:
         """The names that a clause's condition can use."""
-        return frozenset(entry.name for entry in (*self.capabilities, *self.items))
+        return frozenset(row.name for row in self.capabilities) | {row.name for row in self.items}
 
 
 def _refusal_enum(refusals: Iterable[Refusal]) -> Enumeration:
@@ -176,7 +176,7 @@ def _refusal_enum(refusals: Iterable[Refusal]) -> Enumeration:
     return Enumeration(text="Why a request is refused (reasons.toml).", values=values)
 
 
-def _by(attribute: str, rows: Iterable[Any]) -> Mapping[Any, Any]:
+def _by(attribute: str, rows: Iterable[Value]) -> Mapping[Any, Value]:
     return MappingProxyType({getattr(row, attribute): row for row in rows})
 
 

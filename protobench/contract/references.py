@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Collection, Iterable, Iterator, Sequence
+from collections.abc import Callable, Collection, Iterable, Iterator, Sequence
 from typing import Any
 
 from protobench.contract.condition import ConditionError, parse_condition
@@ -17,8 +17,7 @@ PLAIN_ANSWERS = ("accepted", "answered", "none")
 
 def reference_problems(files: Files) -> list[Problem]:
     """Return everything in which the files do not fit together."""
-    checks = (_index, _duplicates, _kinds, _reasons, _faults, _capabilities, _clauses, _errors, _states, _charts)
-    return [problem for check in checks for problem in check(files)]
+    return [problem for check in _CHECKS for problem in check(files)]
 
 
 def _index(files: Files) -> Iterator[Problem]:
@@ -34,7 +33,8 @@ def _index(files: Files) -> Iterator[Problem]:
         rule = f"version {files.frame.layout.version} is not the contract's major {about.major}"
         yield Problem("frame.toml", ("layout", "version"), rule)
     if about.major not in about.majors_supported:
-        yield Problem("contract.toml", ("contract", "majors_supported"), f"lacks the contract's own {about.major}")
+        rule = f"lacks the contract's own major {about.major}"
+        yield Problem("contract.toml", ("contract", "majors_supported"), rule)
 
 
 def _duplicates(files: Files) -> Iterator[Problem]:
@@ -84,7 +84,8 @@ def _kinds(files: Files) -> Iterator[Problem]:
         for place, part in enumerate(record.fields):
             yield from _shape(files, part, ("record", name, "fields", place))
     if REFUSAL_ENUM in files.kinds.enum:
-        yield Problem("kinds.toml", ("enum", REFUSAL_ENUM), "the refusals of reasons.toml are this enumeration")
+        rule = "the refusals of reasons.toml are this enumeration"
+        yield Problem("kinds.toml", ("enum", REFUSAL_ENUM), rule)
 
 
 def _shape(files: Files, shape: Shape, path: Path) -> Iterator[Problem]:
@@ -122,7 +123,8 @@ def _reasons(files: Files) -> Iterator[Problem]:
 
 def _faults(files: Files) -> Iterator[Problem]:
     for index, fault in enumerate(files.faults.fault):
-        for key, enum, value in (("class", "fault_class", fault.class_), ("severity", "severity", fault.severity)):
+        named = (("class", "fault_class", fault.class_), ("severity", "severity", fault.severity))
+        for key, enum, value in named:
             table = files.kinds.enum.get(enum)
             if table is None or value not in table.values:
                 yield Problem("faults.toml", ("fault", index, key), f"{enum} has no value {value!r}")
@@ -142,13 +144,15 @@ def _capabilities(files: Files) -> Iterator[Problem]:
 
 def _clauses(files: Files) -> Iterator[Problem]:
     areas = {area.code for area in files.clauses.area}
-    known = {row.name for row in (*files.capabilities.capability, *files.capabilities.item)}
+    capabilities = files.capabilities
+    known = {row.name for row in capabilities.capability} | {row.name for row in capabilities.item}
     for index, clause in enumerate(files.clauses.clause):
         path: Path = ("clause", index)
         if clause.area not in areas:
             yield Problem("clauses.toml", (*path, "area"), f"there is no area {clause.area!r}")
         if not clause.id.startswith(f"{clause.area}-"):
-            yield Problem("clauses.toml", (*path, "id"), f"{clause.id} does not begin with its area {clause.area}")
+            rule = f"{clause.id} does not begin with its area {clause.area}"
+            yield Problem("clauses.toml", (*path, "id"), rule)
         if clause.needs is not None:
             try:
                 parse_condition(clause.needs, known)
@@ -175,7 +179,8 @@ def _states(files: Files) -> Iterator[Problem]:
     displayed = _enum(files, "state")
     for index, row in enumerate(files.states.displayed):
         if row.state not in displayed:
-            yield Problem("states.toml", ("displayed", index, "state"), f"there is no displayed state {row.state!r}")
+            rule = f"there is no displayed state {row.state!r}"
+            yield Problem("states.toml", ("displayed", index, "state"), rule)
     activities = _enum(files, "activity")
     for index, name in enumerate(files.states.factors.activity):
         if name not in activities:
@@ -206,8 +211,10 @@ def _step(kind: Kind | None, step: Step, chart: Chart, path: Path) -> Iterator[P
     names = {field.name for field in kind.fields}
     for name in step.fields:
         if name not in names:
-            yield Problem("notes.toml", (*path, "fields", name), f"{chart.title}: {kind.name} has no field {name!r}")
-    missing = [field.name for field in kind.fields if field.required != "optional" and field.name not in step.fields]
+            rule = f"{chart.title}: {kind.name} has no field {name!r}"
+            yield Problem("notes.toml", (*path, "fields", name), rule)
+    needed = [field.name for field in kind.fields if field.required != "optional"]
+    missing = [name for name in needed if name not in step.fields]
     if missing:
         yield Problem("notes.toml", (*path, "fields"), f"{chart.title}: {kind.name} needs {_listed(missing)}")
 
@@ -219,3 +226,17 @@ def _enum(files: Files, name: str) -> Collection[str]:
 
 def _listed(names: Iterable[str]) -> str:
     return ", ".join(names)
+
+
+_CHECKS: tuple[Callable[[Files], Iterator[Problem]], ...] = (
+    _index,
+    _duplicates,
+    _kinds,
+    _reasons,
+    _faults,
+    _capabilities,
+    _clauses,
+    _errors,
+    _states,
+    _charts,
+)

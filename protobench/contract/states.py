@@ -73,7 +73,7 @@ class Transition(Pattern):
     def after(self, state: State) -> State:
         """Return the state that follows; its activity may be DECLARED."""
         wanted = (getattr(self, f"next_{name}") for name in FACTORS)
-        return State(*(old if new == "same" else new for old, new in zip(state, wanted, strict=True)))
+        return State._make(old if new == "same" else new for old, new in zip(state, wanted, strict=True))
 
 
 class Input(Model):
@@ -140,13 +140,12 @@ class StateTable:
 
     def __init__(self, file: StatesFile) -> None:
         self.file = file
+        every = product(*(getattr(file.factors, name) for name in FACTORS))
         self.states = tuple(
-            state
-            for state in (State(*values) for values in product(*(getattr(file.factors, name) for name in FACTORS)))
-            if not any(row.fits(state) for row in file.excluded)
+            state for state in map(State._make, every) if not any(row.fits(state) for row in file.excluded)
         )
         self.inputs = file.input
-        self.initial = State(*(getattr(file.initial, name) for name in FACTORS))
+        self.initial = State._make(getattr(file.initial, name) for name in FACTORS)
         self.order = file.order.first_to_last
         cells: dict[tuple[State, str], Cell] = {}
         self.overlaps: list[tuple[State, str, int, int]] = []
@@ -169,7 +168,9 @@ class StateTable:
         except KeyError:
             raise KeyError(f"the state table has no {input_name!r} in {tuple(state)}") from None
 
-    def step(self, state: tuple[str, bool, bool, str], input_name: str, declared: Declared) -> tuple[str, State]:
+    def step(
+        self, state: tuple[str, bool, bool, str], input_name: str, declared: Declared
+    ) -> tuple[str, State]:
         """Return the answer to an input in a state, and the next state.
 
         ``declared``: called with the causes that apply (of "halt", "fault", "lease_end") where the table says
@@ -256,7 +257,7 @@ class StateTable:
 def _includes(wanted: Any, value: object) -> bool:
     if isinstance(wanted, tuple):
         return value in wanted
-    return bool(wanted == "any" or wanted == value)
+    return wanted in ("any", value)
 
 
 def _causes(state: State) -> tuple[str, ...]:
