@@ -71,7 +71,7 @@ class Bench:
         self.facts.items = derive_items(self.contract, description.fields, motions, self.link_items())
 
     def link_items(self) -> set[str]:
-        """Conditions that the link fulfils: ``stream`` bytes can be sent as they are, ``gaps`` in a stream mean something, time is ``virtual``."""
+        """What the link allows: raw ``stream`` bytes, ``gaps`` that mean something, ``virtual`` time."""
         items = set()
         if self.port.has_stream:
             items.add("stream")
@@ -191,7 +191,7 @@ class Bench:
             keeper.send("halt")
             self._rest(keeper)
             status = keeper.status()
-        self._free_lease(keeper, status)
+        self._free_lease(status)
         status = keeper.status()
         if status["unconfirmed"] or status["fault_latch"] or status["activity"] != "idle":
             self._tidy(keeper)
@@ -204,31 +204,31 @@ class Bench:
                 raise Failed("the module does not come to rest after a halt", clause="HLT-07")
             self.port.wait_ms(10)
 
-    def _free_lease(self, keeper: Tester, status: Received) -> None:
+    def _free_lease(self, status: Received) -> None:
         holder = (status["holder"], status["holder_session"])
         if holder == (0, 0):
             return
         for tester in self._testers:
             if (tester.address, tester.session) == holder:
                 tester.epoch, tester.lease = status["epoch"], status["lease"]
-                tester.accepted("release-lease", clause="LSE-12")
+                tester.accepted("release-lease", clause="LSE-11")
                 return
         self.port.wait_ms(status["lease_remaining"] + PATIENCE_MS)
 
     def _tidy(self, keeper: Tester) -> None:
         keeper.take_lease(2000)
         for _ in range(self.facts.description.get("outcomes", 4) + 1):
-            open_events = [entry for entry in self.motion_entries(keeper) if not entry[8]]
+            open_events = [entry for entry in self.motion_entries(keeper) if not entry.confirmed]
             if not open_events:
                 break
             for entry in open_events:
-                keeper.send("confirm", epoch=keeper.epoch, event=entry[0])
-        latched = [entry[0] for entry in self.fault_entries(keeper) if entry[8]]
+                keeper.send("confirm", epoch=keeper.epoch, event=entry.event)
+        latched = [entry.occurrence for entry in self.fault_entries(keeper) if entry.latched]
         for first in range(0, len(latched), 8):
             keeper.accepted("clear-faults", occurrences=latched[first : first + 8], clause="FLT-08")
         if keeper.status()["activity"] == "energized":
             keeper.accepted("de-energize", clause="STA-10")
-        keeper.accepted("release-lease", clause="LSE-12")
+        keeper.accepted("release-lease", clause="LSE-11")
         status = keeper.status()
         if status["unconfirmed"] or status["fault_latch"] or status["activity"] != "idle":
             raise Failed(

@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
 import msgpack
 
 from protobench.contract import Contract
-from protobench.wire import Codec, Dropped, Frame, StreamDecoder, WireError
+from protobench.wire import Codec, Dropped, Frame, StreamDecoder, WireError, stuff
 
 
 @dataclass(slots=True)
@@ -34,7 +35,7 @@ class Language:
         self._enums: dict[tuple[str, str], dict[int, str]] = {}
         for kind in contract.kinds:
             for field in kind.fields:
-                if field.type == "enum":
+                if field.enum is not None:
                     self._enums[kind.name, field.name] = {
                         number: name for name, number in contract.enum_values(field.enum).items()
                     }
@@ -53,7 +54,7 @@ class Language:
         """The number of an enumeration's value."""
         return self.contract.enum_values(enum)[name]
 
-    def body(self, kind: str, fields: dict[str, Any]) -> bytes:
+    def body(self, kind: str, fields: Mapping[Any, Any]) -> bytes:
         """A canonical body; names of fields, or plain keys, in any order. Values are not checked.
 
         Enumerations may be given by name.
@@ -65,10 +66,10 @@ class Language:
             values[key] = self._value(kind, name, value)
         return canonical({key: values[key] for key in sorted(values)})
 
-    def _value(self, kind: str, name: str, value: Any) -> Any:
+    def _value(self, kind: str, name: str | int, value: Any) -> Any:
         if not isinstance(value, str):
             return value
-        names = self._enums.get((kind, name))
+        names = self._enums.get((kind, str(name)))
         if names is None:
             return value
         for number, known in names.items():
@@ -81,7 +82,8 @@ class Language:
         return self.codec.frames.pack(code, body, **header)
 
     def stuff(self, frame: bytes) -> bytes:
-        return self.codec.stuff(frame)
+        """A bare frame stuffed, without its delimiter."""
+        return stuff(frame)
 
     # ------------------------------------------------------------ in
 

@@ -2,9 +2,9 @@
 
     pytest --pyargs protobench.suite --link run:./my-module
 
-A case is any test that takes the fixture ``bench``; one without the ``case`` decorator is judged too, it only has no
-clauses. Verdicts map to pytest's outcomes: pass; fail, inconc and error fail the test, with the word in front; what does not
-apply is skipped, with the item that says so.
+A case is any test that takes the fixture ``bench``; one without the ``case`` decorator is judged too, it only has
+no clauses. Verdicts map to pytest's outcomes: fail, inconc and error fail the test, with the word in front; what
+does not apply is skipped, with the item that says so.
 """
 
 from __future__ import annotations
@@ -54,7 +54,7 @@ def bench(bench_session: Session) -> Bench:
 @pytest.hookimpl(tryfirst=True)
 def pytest_pyfunc_call(pyfuncitem: pytest.Function) -> bool | None:
     """Judge a test that takes ``bench`` as a case."""
-    session = pyfuncitem.funcargs.get("bench_session") or _session_of(pyfuncitem)
+    session = _session_of(pyfuncitem)
     if session is None:
         return None
     arguments = {name: pyfuncitem.funcargs[name] for name in pyfuncitem._fixtureinfo.argnames}

@@ -90,7 +90,7 @@ class Port:
 
     @property
     def u_ms(self) -> float:
-        """Expanded uncertainty of a measured interval, in ms: nothing in virtual time, else what the bench's own waits showed."""
+        """Expanded uncertainty of an interval in ms: none in virtual time, else by how late own waits ended."""
         if self.link.virtual:
             return 0.0
         return max(REAL_TIME_U_MS, 3 * self._lateness_ns / 1e6)
@@ -194,8 +194,8 @@ class Port:
 
     def _expire(self) -> None:
         if self.link.framing is Framing.STREAM:
-            for dropped in self._decoder.expire(self.now_ns):
-                self._dropped(dropped, self.now_ns)
+            for unit in self._decoder.expire(self.now_ns):
+                self._unit(unit, self.now_ns)
 
     def _take(self, chunk: Chunk) -> None:
         if self.link.framing is Framing.STREAM:

@@ -14,8 +14,8 @@ _WORDS = ("and", "or", "not", "(", ")")
 def select(cases: Sequence[CaseInfo], expression: str | None) -> list[CaseInfo]:
     """The cases that an expression selects; all of them without one.
 
-    A word selects the cases whose id contains it, whose class it is, or which cover the clause it names; words are joined
-    by ``and``, ``or``, ``not`` and parentheses. Raises ValueError, with the place, for anything else.
+    A word selects the cases whose id contains it, whose class or level it is, or which cover the clause it names;
+    words are joined by ``and``, ``or``, ``not`` and parentheses. Raises ValueError, with the place, for anything else.
     """
     if expression is None:
         return list(cases)
@@ -70,9 +70,8 @@ class _Reader:
                 raise ValueError(f"expression {self._text!r}: a closing parenthesis is missing")
             return found
         if self._next >= len(self._tokens) or self._tokens[self._next] in _WORDS:
-            raise ValueError(
-                f"expression {self._text!r}: a word is missing after {' '.join(self._tokens[: self._next]) or 'the start'}"
-            )
+            before = " ".join(self._tokens[: self._next]) or "the start"
+            raise ValueError(f"expression {self._text!r}: a word is missing after {before}")
         self._next += 1
         return self._selects(self._tokens[self._next - 1])
 

@@ -7,6 +7,7 @@ import random
 from emulator.config import ModuleConfig
 from emulator.engine import ModuleEngine
 from emulator.storage import MemoryStorage
+
 from protobench.contract import load_contract
 from protobench.links import MemoryLink
 

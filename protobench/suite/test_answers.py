@@ -79,7 +79,10 @@ def _judge_late(bench: Bench, a: Tester, late: list[tuple[float, str]]) -> None:
     for _ in range(20):
         sent = a.send(late[0][1], **({"duration": 9000} if late[0][1] == "renew-lease" else {}))
         again += (a.answered(sent).time_ns - sent.time_ns) / 1e6 > bench.facts.receipt_ms + bench.port.u_ms
-    words = f"{late[0][1]} took {late[0][0]:.1f} ms, {bench.facts.receipt_ms} ms are declared, u = {bench.port.u_ms:.1f} ms"
+    delay_ms, kind = late[0]
+    words = (
+        f"{kind} took {delay_ms:.1f} ms, {bench.facts.receipt_ms} are declared, u = {bench.port.u_ms:.1f} ms"
+    )
     if again >= 15:
         raise Failed(f"{words}; so did {again} of 20 more", clause="ACK-03")
     raise Inconclusive(f"{words}; {again} of 20 more were late too: the bench or the link may be slow")
@@ -119,7 +122,8 @@ def _flight_ns(bench: Bench, a: Tester) -> int:
         return 0
     sent = a.send("time-exchange", t1=0)
     answer = a.answered(sent)
-    return answer.time_ns - sent.time_ns - (answer["t3"] - answer["t2"]) % (1 << 32) * 1000
+    inside_us: int = (answer["t3"] - answer["t2"]) % (1 << 32)
+    return answer.time_ns - sent.time_ns - inside_us * 1000
 
 
 @case(
@@ -370,7 +374,7 @@ def test_requester_and_holder(bench: Bench) -> None:
     a, b = bench.a, bench.b
     a.make_ready()
     first, second = a.outcome(a.move()), a.outcome(a.move())
-    a.accepted("release-lease", clause="LSE-12")
+    a.accepted("release-lease", clause="LSE-11")
     b.take_lease()
     a.confirm(first)
     if b.status()["unconfirmed"] != 1:

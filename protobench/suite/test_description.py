@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 from protobench.judge import Failed, NotApplicable
 from protobench.suite.bench import Bench
 from protobench.suite.case import case
@@ -118,7 +120,7 @@ def test_moving_now(bench: Bench) -> None:
 def test_unsupported(bench: Bench) -> None:
     a = bench.a
     a.take_lease()
-    fields: dict[str, dict[str, object]] = {
+    fields: dict[str, dict[str, Any]] = {
         "telemetry-on": {"period": 100, "duration": 1000}, "telemetry-off": {}, "set-groups": {"groups": []},
         "identify": {"duration": 1000}, "read-groups": {}, "read-truth": {}, "assist": {"op": "release"},
     }  # fmt: skip

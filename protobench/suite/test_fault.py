@@ -101,7 +101,7 @@ def test_latch(bench: Bench) -> None:
         if latching:
             a.take_lease(2000)
             a.accepted("clear-faults", occurrences=_latched(bench, a), clause="FLT-08")
-            a.accepted("release-lease", clause="LSE-12")
+            a.accepted("release-lease", clause="LSE-11")
 
 
 @case(
@@ -194,7 +194,7 @@ def test_spacing(bench: Bench) -> None:
     bench.raised.update(codes)
     for one in sent:
         a.expect_accepted(one, "AST-01")
-    order = []
+    order: list[int] = []
     for _ in codes:
         event = a.next_fault(None, 2 * SPACING_MS)
         if event is None:
@@ -241,7 +241,7 @@ def test_grant_announces(bench: Bench) -> None:
     for code in codes:
         a.assist("raise", code=code)
         a.confirm(_next(a, code, 400))
-    a.accepted("release-lease", clause="LSE-12")
+    a.accepted("release-lease", clause="LSE-11")
     b.take_lease()
     for code in codes:
         event = _next(b, code, 400, "FLT-07")

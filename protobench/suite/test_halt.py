@@ -59,7 +59,8 @@ def test_unexamined(bench: Bench) -> None:
     shapes: list[dict[str, object]] = [
         {"version": 2}, {"version": 255}, {"flags": 0xFF}, {"body": b""}, {"body": b"\xc1"}, {"body": b"\x80\x80"},
         {"body": b"\xff" * 229}, {"body_length": 0}, {"body_length": 255}, {"number": 0}, {"number": 0xFFFFFFFF},
-        {"body": b"\x81\x50\x00"}, {"session": 0}, {"version": 7, "flags": 0x80, "body": b"\x00" * 60, "body_length": 3},
+        {"body": b"\x81\x50\x00"}, {"session": 0},
+        {"version": 7, "flags": 0x80, "body": b"\x00" * 60, "body_length": 3},
     ]  # fmt: skip
     with expect_drops(bench, {}, "HLT-02"):
         for shape in shapes:

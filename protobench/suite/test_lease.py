@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+from typing import Any
+
 from protobench.judge import Failed, Inconclusive
 from protobench.suite.bench import Bench
 from protobench.suite.case import case
@@ -11,7 +14,7 @@ from protobench.suite.tools import expect_silent_refusals
 
 SHORTEST_MS = 500
 EXPIRY_SLACK_MS = 50
-COMMANDS: dict[str, dict[str, object]] = {
+COMMANDS: dict[str, dict[str, Any]] = {
     "reset": {"halt_count": 0},
     "renew-lease": {"duration": 9000},
     "release-lease": {},
@@ -36,7 +39,7 @@ def _held(tester: Tester) -> bool:
     "LSE.take",
     "valid",
     "A free lease is granted with a number one higher, told in receipt, status and description.",
-    clauses=["LSE-01", "LSE-15"],
+    clauses=["LSE-01", "LSE-14"],
 )
 def test_take(bench: Bench) -> None:
     a = bench.a
@@ -47,13 +50,13 @@ def test_take(bench: Bench) -> None:
             raise Failed(f"lease number {before} was followed by {receipt.get('lease')}", clause="LSE-01")
         status = a.status()
         if not _held(a) or status["lease"] != a.lease or a.read("describe")["lease"] != a.lease:
-            raise Failed("status and description must tell holder and number", clause="LSE-15")
+            raise Failed("status and description must tell holder and number", clause="LSE-14")
         if not 0 < status["lease_remaining"] <= 5000:
-            raise Failed(f"lease_remaining is {status['lease_remaining']} of 5000 ms", clause="LSE-15")
-        a.accepted("release-lease", clause="LSE-12")
+            raise Failed(f"lease_remaining is {status['lease_remaining']} of 5000 ms", clause="LSE-14")
+        a.accepted("release-lease", clause="LSE-11")
     status = a.status()
     if status["holder"] or status["holder_session"] or status["lease_remaining"]:
-        raise Failed("a free lease has holder, session and remaining 0", clause="LSE-15")
+        raise Failed("a free lease has holder, session and remaining 0", clause="LSE-14")
 
 
 @case(
@@ -146,7 +149,7 @@ def test_duration(bench: Bench) -> None:
     "LSE.expiry",
     "valid",
     "The lease ends at its time, not earlier and at most 50 ms later.",
-    clauses=["LSE-05", "LSE-16", "LSE-10"],
+    clauses=["LSE-05", "LSE-15", "LSE-10"],
 )
 def test_expiry(bench: Bench) -> None:
     a = bench.a
@@ -176,13 +179,13 @@ def test_expiry(bench: Bench) -> None:
     "LSE.extension",
     "valid",
     "Accepted first-seen commands and renewals extend the lease to arrival plus duration.",
-    clauses=["LSE-06", "LSE-16"],
+    clauses=["LSE-06", "LSE-15"],
 )
 def test_extension(bench: Bench) -> None:
     a = bench.a
     a.take_lease(2000)
     halt_count = a.status()["halt_count"]
-    steps: list[tuple[str, dict[str, object], int]] = [
+    steps: list[tuple[str, dict[str, Any], int]] = [
         ("cancel", {}, 2000),
         ("reset", {"halt_count": halt_count}, 2000),
         ("energize", {}, 2000),
@@ -202,7 +205,7 @@ def test_extension(bench: Bench) -> None:
                 clause="LSE-06",
             )
         if status["lease_remaining"] > duration:
-            raise Failed(f"{status['lease_remaining']} ms remain of {duration}", clause="LSE-15")
+            raise Failed(f"{status['lease_remaining']} ms remain of {duration}", clause="LSE-14")
 
 
 @case(
@@ -217,7 +220,7 @@ def test_no_extension(bench: Bench) -> None:
     base = a.accepted("renew-lease", duration=8000, clause="LSE-06")
     b.lease = a.lease
     bench.port.wait_ms(200)
-    steps = [
+    steps: list[Callable[[], object]] = [
         lambda: a.answered(a.send_frame(base.frame_bytes)),
         lambda: a.answered(a.send("renew-lease", duration=100)),
         lambda: a.answered(a.send("energize")),
@@ -305,7 +308,7 @@ def test_end_past_return(bench: Bench) -> None:
     a.hold("committed")
     move = a.move(bench.facts.ballistic().name)
     bench.port.wait_ms(bench.facts.ballistic().no_return_ms + 20)
-    a.accepted("release-lease", clause="LSE-12")
+    a.accepted("release-lease", clause="LSE-11")
     b.lease = a.lease
     b.refused("moving", "take-lease", duration=2000, clause="LSE-01")
     a.release_hold()
@@ -321,23 +324,23 @@ def test_end_past_return(bench: Bench) -> None:
     "LSE.release",
     "valid",
     "release-lease does at once what expiry does, and only the holder's.",
-    clauses=["LSE-12", "LSE-08", "LSE-09", "LSE-10"],
+    clauses=["LSE-11", "LSE-08", "LSE-09", "LSE-10"],
     needs="stoppable",
 )
 def test_release(bench: Bench) -> None:
     a, b = bench.a, bench.b
     a.make_ready()
     b.lease = a.lease
-    b.refused("not-holder", "release-lease", clause="LSE-12")
+    b.refused("not-holder", "release-lease", clause="LSE-11")
     if not _held(a):
-        raise Failed("a stranger's release ended the lease", clause="LSE-12")
+        raise Failed("a stranger's release ended the lease", clause="LSE-11")
     facts = bench.facts.stoppable()
     move = a.move(facts.name)
     queued = a.move() if bench.facts.has("queue") else None
     bench.port.wait_ms(facts.stoppable_ms / 4)
-    a.accepted("release-lease", clause="LSE-12")
+    a.accepted("release-lease", clause="LSE-11")
     if _held(a):
-        raise Failed("a released lease is still held", clause="LSE-12")
+        raise Failed("a released lease is still held", clause="LSE-11")
     outcome = a.ended(move, "cancelled", "lease-end", "LSE-09")
     if abs(outcome["displacement"]) >= abs(move.fields["magnitude"]):
         raise Failed("a motion went on after its lease was released", clause="LSE-09")
@@ -351,7 +354,7 @@ def test_release(bench: Bench) -> None:
     "LSE.renew-many",
     "valid",
     "A renewal to all extends the sender's lease only, keeps its number, and is answered in its window.",
-    clauses=["LSE-13", "LSE-06", "ADR-15", "ADR-05"],
+    clauses=["LSE-12", "LSE-06", "ADR-15", "ADR-05"],
 )
 def test_renew_many(bench: Bench) -> None:
     a, b = bench.a, bench.b
@@ -360,25 +363,25 @@ def test_renew_many(bench: Bench) -> None:
     sent = a.send("renew-lease", to=bench.broadcast, duration=4000, answer_window=30)
     receipt = a.answer(sent, 30 + a.patience_ms)
     if receipt is None or receipt.get("result") != "accepted":
-        raise Failed("a holder's renewal to all was not answered as accepted", clause="LSE-13")
+        raise Failed("a holder's renewal to all was not answered as accepted", clause="LSE-12")
     status = a.status()
     if status["lease"] != a.lease or not _held(a):
-        raise Failed("a renewal to all changed number or holder", clause="LSE-13")
+        raise Failed("a renewal to all changed number or holder", clause="LSE-12")
     if status["lease_remaining"] < 4000 - 300 - 2 * bench.port.u_ms - bench.facts.receipt_ms:
         raise Failed(f"a renewal to all left {status['lease_remaining']} of 4000 ms", clause="LSE-06")
-    with expect_silent_refusals(bench, 1, "LSE-13"):
+    with expect_silent_refusals(bench, 1, "LSE-12"):
         b.send("renew-lease", to=bench.broadcast, duration=30_000, answer_window=30)
         bench.port.wait_ms(60)
-        b.silent("a stranger's renewal to all", "LSE-13")
+        b.silent("a stranger's renewal to all", "LSE-12")
     if _remaining(a) > 4000:
-        raise Failed("a stranger's renewal extended the lease", clause="LSE-13")
+        raise Failed("a stranger's renewal extended the lease", clause="LSE-12")
 
 
 @case(
     "LSE.restart",
     "valid",
     "A restart ends the lease and numbers begin again at 0.",
-    clauses=["LSE-14"],
+    clauses=["LSE-13"],
     needs="assist",
 )
 def test_restart(bench: Bench) -> None:
@@ -387,22 +390,22 @@ def test_restart(bench: Bench) -> None:
     a.restart()
     status = a.status()
     if status["holder"] or status["lease"] or a.read("describe")["lease"]:
-        raise Failed("after a restart there must be no holder and lease number 0", clause="LSE-14")
+        raise Failed("after a restart there must be no holder and lease number 0", clause="LSE-13")
     if a.take_lease().get("lease") != 1:
-        raise Failed("the first lease after a restart has number 1", clause="LSE-14")
+        raise Failed("the first lease after a restart has number 1", clause="LSE-13")
 
 
 @case(
     "LSE.former-holder",
     "inopportune",
     "A former holder's requests are refused stale-lease and do nothing to the new one.",
-    clauses=["LSE-12", "SEQ-15", "LSE-03"],
+    clauses=["LSE-11", "SEQ-15", "LSE-03"],
 )
 def test_former_holder(bench: Bench) -> None:
     a, b = bench.a, bench.b
     a.take_lease(20_000)
     old = a.accepted("renew-lease", duration=20_000, clause="LSE-06")
-    a.accepted("release-lease", clause="LSE-12")
+    a.accepted("release-lease", clause="LSE-11")
     b.make_ready()
     for kind, fields in COMMANDS.items():
         receipt = a.refused("stale-lease", kind, clause="SEQ-15", **fields)
@@ -411,7 +414,7 @@ def test_former_holder(bench: Bench) -> None:
     a.expect_accepted(a.send_frame(old.frame_bytes), "SEQ-03")
     status = b.status()
     if not _held(b) or status["activity"] != "energized" or status["lease_remaining"] > 10_000:
-        raise Failed("a former holder's requests changed the lease or the module", clause="LSE-12")
+        raise Failed("a former holder's requests changed the lease or the module", clause="LSE-11")
 
 
 @case(

@@ -21,7 +21,7 @@ def test_garbage(bench: Bench) -> None:
     for block in garbage_blocks(bench, FLOOD):
         bench.port.send_raw(block + b"\0" if bench.facts.has("stream") else block)
     bench.port.wait_ms(50)
-    bench.port.take_all(lambda received: True)
+    bench.port.inbox.clear()
     if bench.a.answer(bench.a.send("describe"), 1000 + bench.port.u_ms) is None:
         raise Failed("no answer after a flood of garbage", clause="LOD-01")
 

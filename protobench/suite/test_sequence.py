@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 from protobench.judge import Failed
 from protobench.suite.bench import CONTROLLER_A, Bench
 from protobench.suite.case import case
@@ -200,7 +202,7 @@ def test_receipt_gone(bench: Bench) -> None:
     a = bench.a
     a.take_lease()
     first = a.accepted("renew-lease", duration=9000, clause="LSE-06")
-    a.accepted("release-lease", clause="LSE-12")
+    a.accepted("release-lease", clause="LSE-11")
     a.take_lease()
     for _ in range(min(30, bench.facts.description["numbers"] + 1)):
         a.accepted("renew-lease", duration=9000, clause="LSE-06")
@@ -317,7 +319,7 @@ def test_reads_free(bench: Bench) -> None:
     "SEQ.many-newer",
     "inopportune",
     "A command to many acts only with a newer number; its copy does nothing and is a silent refusal.",
-    clauses=["SEQ-12", "LSE-07", "LSE-13"],
+    clauses=["SEQ-12", "LSE-07", "LSE-12"],
 )
 def test_many_newer(bench: Bench) -> None:
     a = bench.a
@@ -361,7 +363,7 @@ def test_halt_outside(bench: Bench) -> None:
     a.expect_accepted(a.send_frame(sent.frame_bytes), "SEQ-13")
 
 
-FENCED = {
+FENCED: dict[str, dict[str, Any]] = {
     "reset": {"halt_count": 0},
     "renew-lease": {"duration": 9000},
     "energize": {},

@@ -180,7 +180,7 @@ class Tester:
         return self.read("status")
 
     def silent(self, what: str, clause: str, *, quiet_ms: float = QUIET_MS) -> None:
-        """Judge absence: a read must be answered, nothing else of the answer kinds may come before it or in a quiet time after."""
+        """Judge absence: a sentinel read is answered, and no other answer comes before it or in a quiet time after."""
         sentinel = self.send("describe")
         self.answered(sentinel)
         self.port.wait_ms(quiet_ms + self.port.u_ms)
@@ -204,9 +204,10 @@ class Tester:
             within_ms = self.bench.longest_ms + self.bench.facts.stop_ms + PATIENCE_MS + self.port.u_ms
         return self.port.wait_for(lambda received: is_outcome_of(received, move), within_ms)
 
-    def confirm(self, event: Received, **options: Any) -> Sent:
+    def confirm(self, received: Received, **options: Any) -> Sent:
         """Confirm an outcome or a fault event."""
-        return self.send("confirm", **{"epoch": event["epoch"], "event": event["event"], **options})
+        options = {"epoch": received["epoch"], "event": received["event"], **options}
+        return self.send("confirm", **options)
 
     def ended(
         self, move: Sent, outcome: str, cause: str, clause: str, within_ms: float | None = None

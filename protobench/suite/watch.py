@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, ClassVar
 
 from protobench.contract import Contract
 from protobench.wire import Dropped, Frame
@@ -84,7 +85,7 @@ class Watch:
         kind = self._requests.get(reading.kind)
         asked.answer_kinds.add("receipt")
         if kind is not None:
-            asked.answer_kinds.add(kind.answer)
+            asked.answer_kinds.add(kind.answer or "receipt")
             asked.moved |= kind.name == "move"
 
     # ------------------------------------------------------------ in
@@ -155,7 +156,7 @@ class Watch:
             elif not asked.accepted:
                 self._violate("ACK-04", f"an outcome without an accepted receipt before it: {reading.words}")
         if reading.fields["outcome"] == "lost":
-            self._violate("ACK-18", f"no module sends outcome lost: {reading.words}")
+            self._violate("ACK-17", f"no module sends outcome lost: {reading.words}")
         earlier = self._outcomes.setdefault((key, reading.fields["epoch"]), data)
         if earlier != data:
             self._violate("ACK-07", f"a second, different outcome of one motion: {reading.words}")
@@ -165,7 +166,7 @@ class Watch:
         if last is not None and time_ns - last < self._spacing_ns - self.spacing_slack_ns:
             self._violate("FLT-06", f"two fault events {(time_ns - last) / 1e6:.3f} ms apart")
 
-    _CHECKS = {
+    _CHECKS: ClassVar[dict[str, Callable[..., None]]] = {
         "receipt": _receipt,
         "status-report": _status_report,
         "outcome": _outcome,
