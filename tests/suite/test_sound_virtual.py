@@ -1,0 +1,50 @@
+"""Sound modules pass everything that applies, in virtual time: the Python one in every profile, the C one in both."""
+
+from __future__ import annotations
+
+import random
+
+import pytest
+from emulator.config import ModuleConfig
+from emulator.engine import ModuleEngine
+from emulator.storage import MemoryStorage
+from judging import expect_sound, firmware, judge
+from protobench.contract import load_contract
+from protobench.links import MemoryLink
+
+PROFILES = {
+    "default": ModuleConfig,
+    "smallest": ModuleConfig.smallest,
+    "slow": ModuleConfig.slow,
+    "holding": ModuleConfig.holding,
+}
+
+
+def test_embedded_module() -> None:
+    record = judge()
+    expect_sound(record)
+    assert record.environment["time"] == "virtual"
+
+
+@pytest.mark.parametrize("profile", PROFILES)
+@pytest.mark.parametrize("seed", [1, 2])
+def test_python_module(profile: str, seed: int) -> None:
+    def opener() -> MemoryLink:
+        config = PROFILES[profile]()
+        return MemoryLink(ModuleEngine(config, MemoryStorage(), random.Random(seed), load_contract()))
+
+    expect_sound(judge(opener=opener))
+
+
+@pytest.mark.parametrize("build", ["build", "build-sanitized"])
+@pytest.mark.parametrize("program", ["module-lockstep", "module-smallest-lockstep"])
+def test_c_module(program: str, build: str) -> None:
+    record = judge(f"lockstep:{firmware(program, build)}")
+    expect_sound(record)
+    assert record.environment["time"] == "virtual"
+
+
+def test_the_smallest_profile_is_judged_by_fewer_cases() -> None:
+    small = judge(f"lockstep:{firmware('module-smallest-lockstep')}")
+    whole = judge(f"lockstep:{firmware('module-lockstep')}")
+    assert small.count("not_applicable") > whole.count("not_applicable")
