@@ -1,0 +1,129 @@
+#include "answers.h"
+
+#include "bytes.h"
+#include "module.h"
+
+void pb_answers_start(struct pb_module *module)
+{
+    pb_clear(&module->answers, sizeof module->answers);
+}
+
+struct pb_answer pb_answer_to(const struct pb_module *module, const struct pb_header *header, uint8_t kind)
+{
+    struct pb_answer answer;
+    pb_clear(&answer, sizeof answer);
+    answer.kind = kind;
+    answer.source = module->address;
+    answer.destination = header->source;
+    answer.session = header->session;
+    answer.number = header->number;
+    answer.receipt.key = PB_NO_KEY;
+    return answer;
+}
+
+bool pb_answers_have_room(const struct pb_module *module)
+{
+    return module->answers.count < PB_MAX_ANSWERS;
+}
+
+uint32_t pb_answers_queue(struct pb_module *module, const struct pb_answer *answer)
+{
+    struct pb_answers *answers = &module->answers;
+    struct pb_answer *place = &answers->unicast[(answers->first + answers->count) % PB_MAX_ANSWERS];
+    *place = *answer;
+    place->due_us = module->now_us + module->config->receipt_delay_us;
+    answers->count++;
+    return ++answers->queued;
+}
+
+void pb_answers_queue_halt(struct pb_module *module, const struct pb_answer *answer)
+{
+    struct pb_answers *answers = &module->answers;
+    if (answers->halt_count == PB_MAX_HALT_ANSWERS)
+        return;
+    struct pb_answer *place = &answers->halts[answers->halt_count++];
+    *place = *answer;
+    place->due_us = module->now_us + module->config->turnaround_us;
+}
+
+/* The place of the answer that waits for this session, else a free one, else null. */
+static const struct pb_many_answer *many_place(const struct pb_module *module, uint32_t destination, uint32_t session)
+{
+    const struct pb_many_answer *free_place = NULL;
+    for (unsigned i = 0; i < PB_MAX_SESSIONS; i++) {
+        const struct pb_many_answer *place = &module->answers.many[i];
+        if (place->waiting && place->answer.destination == destination && place->answer.session == session)
+            return place;
+        if (!place->waiting && free_place == NULL)
+            free_place = place;
+    }
+    return free_place;
+}
+
+bool pb_answers_have_room_for_many(const struct pb_module *module, const struct pb_header *header)
+{
+    return many_place(module, header->source, header->session) != NULL;
+}
+
+void pb_answers_queue_many(struct pb_module *module, const struct pb_answer *answer, uint32_t window_ms)
+{
+    const struct pb_many_answer *found = many_place(module, answer->destination, answer->session);
+    if (found == NULL)
+        return;
+    struct pb_many_answer *place = &module->answers.many[found - module->answers.many];
+    place->waiting = true;
+    place->answer = *answer;
+    place->answer.due_us = module->now_us + pb_random_up_to(&module->random, 1000u * window_ms);
+}
+
+bool pb_answers_have_left(const struct pb_module *module, uint32_t serial)
+{
+    return (int32_t)(module->answers.left - serial) >= 0;
+}
+
+uint64_t pb_answers_next_due(const struct pb_module *module)
+{
+    const struct pb_answers *answers = &module->answers;
+    uint64_t due_us = PB_NEVER;
+    if (answers->halt_count > 0)
+        due_us = answers->halts[0].due_us;
+    if (answers->count > 0)
+        due_us = pb_earlier(due_us, answers->unicast[answers->first].due_us);
+    for (unsigned i = 0; i < PB_MAX_SESSIONS; i++)
+        if (answers->many[i].waiting)
+            due_us = pb_earlier(due_us, answers->many[i].answer.due_us);
+    return due_us;
+}
+
+void pb_answers_send_halts(struct pb_module *module)
+{
+    struct pb_answers *answers = &module->answers;
+    while (answers->halt_count > 0 && answers->halts[0].due_us <= module->now_us) {
+        if (!pb_encode_answer(module, &answers->halts[0]))
+            return;
+        answers->halt_count--;
+        for (unsigned i = 0; i < answers->halt_count; i++)
+            answers->halts[i] = answers->halts[i + 1];
+    }
+}
+
+void pb_answers_send_unicast(struct pb_module *module)
+{
+    struct pb_answers *answers = &module->answers;
+    while (answers->count > 0 && answers->unicast[answers->first].due_us <= module->now_us) {
+        if (!pb_encode_answer(module, &answers->unicast[answers->first]))
+            return;
+        answers->first = (uint8_t)((answers->first + 1u) % PB_MAX_ANSWERS);
+        answers->count--;
+        answers->left++;
+    }
+}
+
+void pb_answers_send_many(struct pb_module *module)
+{
+    for (unsigned i = 0; i < PB_MAX_SESSIONS; i++) {
+        struct pb_many_answer *place = &module->answers.many[i];
+        if (place->waiting && place->answer.due_us <= module->now_us && pb_encode_answer(module, &place->answer))
+            place->waiting = false;
+    }
+}

@@ -1,0 +1,114 @@
+#include "history.h"
+
+#include "bytes.h"
+#include "crc.h"
+#include "module.h"
+
+static const uint32_t HALF_RANGE = 0x80000000u;
+
+void pb_history_start(struct pb_module *module)
+{
+    pb_clear(&module->history, sizeof module->history);
+}
+
+uint32_t pb_history_digest(const struct pb_request *request)
+{
+    uint8_t head[6] = {request->header.kind, request->header.flags};
+    pb_put(head + 2, 4, request->header.destination);
+    uint32_t state = pb_crc_add(pb_crc_begin(), head, sizeof head);
+    state = pb_crc_add(state, request->body_bytes, request->body_size);
+    return pb_crc_end(state);
+}
+
+static struct pb_session *find_session(struct pb_module *module, const struct pb_header *header)
+{
+    for (unsigned i = 0; i < module->config->sessions; i++) {
+        struct pb_session *session = &module->history.sessions[i];
+        if (session->used && session->source == header->source && session->session == header->session)
+            return session;
+    }
+    return NULL;
+}
+
+/* Newest first: after a wrap of the numbers an old receipt of the same number may still be there. */
+static const struct pb_entry *find_entry(const struct pb_module *module, const struct pb_session *session,
+                                         uint32_t number)
+{
+    for (unsigned i = session->count; i-- > 0;) {
+        const struct pb_entry *entry = &session->entries[(session->first + i) % module->config->numbers];
+        if (entry->number == number)
+            return entry;
+    }
+    return NULL;
+}
+
+uint8_t pb_history_compare(struct pb_module *module, const struct pb_request *request, struct pb_receipt *copy)
+{
+    struct pb_session *session = find_session(module, &request->header);
+    if (session == NULL)
+        return 0;
+    session->last_use = ++module->history.uses;
+    const uint32_t ahead = request->header.number - session->highest;
+    if (ahead != 0 && ahead < HALF_RANGE)
+        return 0;
+    const struct pb_entry *entry = find_entry(module, session, request->header.number);
+    if (entry != NULL) {
+        if (entry->digest != pb_history_digest(request))
+            return PB_REFUSAL_CONFLICT;
+        *copy = entry->receipt;
+        return PB_HISTORY_COPY;
+    }
+    const uint32_t behind = session->highest - request->header.number;
+    if (behind >= PB_LIMIT_NUMBER_WINDOW || (session->seen >> behind & 1u) != 0)
+        return PB_REFUSAL_ANSWER_EXPIRED;
+    return PB_REFUSAL_LATE_UNSEEN;
+}
+
+/* A free place, or that of the session used longest ago; never the lease holder's. */
+static struct pb_session *make_room(struct pb_module *module)
+{
+    struct pb_session *oldest = NULL;
+    for (unsigned i = 0; i < module->config->sessions; i++) {
+        struct pb_session *session = &module->history.sessions[i];
+        if (!session->used)
+            return session;
+        if (pb_lease_is_holder(module, session->source, session->session))
+            continue;
+        if (oldest == NULL || (int32_t)(session->last_use - oldest->last_use) < 0)
+            oldest = session;
+    }
+    return oldest;
+}
+
+struct pb_session *pb_history_consume(struct pb_module *module, const struct pb_header *header)
+{
+    struct pb_session *session = find_session(module, header);
+    if (session == NULL) {
+        session = make_room(module);
+        pb_clear(session, sizeof *session);
+        session->used = true;
+        session->source = header->source;
+        session->session = header->session;
+        session->last_use = ++module->history.uses;
+        session->highest = header->number;
+    }
+    const uint32_t ahead = header->number - session->highest;
+    session->seen = ahead < PB_LIMIT_NUMBER_WINDOW ? session->seen << ahead : 0;
+    session->seen |= 1u;
+    session->highest = header->number;
+    return session;
+}
+
+void pb_history_store(const struct pb_module *module, struct pb_session *session, const struct pb_request *request,
+                      const struct pb_receipt *receipt)
+{
+    const uint8_t capacity = module->config->numbers;
+    struct pb_entry *entry = &session->entries[(session->first + session->count) % capacity];
+    if (session->count < capacity)
+        session->count++;
+    else
+        session->first = (uint8_t)((session->first + 1u) % capacity);
+    entry->number = request->header.number;
+    entry->digest = pb_history_digest(request);
+    entry->receipt = *receipt;
+}

@@ -1,0 +1,43 @@
+#include "stream.h"
+
+/* The contract leaves free what happens between the two limits: the middle keeps both with the greatest margin. */
+static const uint64_t EXPIRY_US = 1000u * (PB_LIMIT_HALF_FRAME_BRIDGE + PB_LIMIT_HALF_FRAME_DISCARD) / 2u;
+
+void pb_stream_reset(struct pb_stream *stream)
+{
+    stream->size = 0;
+    stream->ended = false;
+    stream->too_long = false;
+    stream->last_byte_us = 0;
+}
+
+bool pb_stream_is_inside(const struct pb_stream *stream)
+{
+    return stream->size > 0 && !stream->ended;
+}
+
+bool pb_stream_expire(struct pb_stream *stream, uint64_t now_us)
+{
+    if (!pb_stream_is_inside(stream) || now_us - stream->last_byte_us <= EXPIRY_US)
+        return false;
+    pb_stream_reset(stream);
+    return true;
+}
+
+enum pb_stream_step pb_stream_take(struct pb_stream *stream, uint64_t now_us, uint8_t byte)
+{
+    if (stream->ended)
+        pb_stream_reset(stream);
+    stream->last_byte_us = now_us;
+    if (byte == PB_DELIMITER) {
+        if (stream->size == 0)
+            return PB_STREAM_MORE; /* fill */
+        stream->ended = true;
+        return stream->too_long ? PB_STREAM_TOO_LONG : PB_STREAM_BLOCK;
+    }
+    if (stream->size < sizeof stream->block)
+        stream->block[stream->size++] = byte;
+    else
+        stream->too_long = true;
+    return PB_STREAM_MORE;
+}
