@@ -174,7 +174,7 @@ class Bench:
         self.b = self.tester(CONTROLLER_B)
 
     def end(self) -> None:
-        """Postamble: at rest, nothing waiting, nothing unconfirmed, no fault, no lease.
+        """Postamble: at rest, halted, nothing waiting, nothing unconfirmed, no fault, no lease.
 
         Raises Failed when the module cannot be brought back to the start.
         """
@@ -187,14 +187,16 @@ class Bench:
                     keeper.accepted("assist", op="withdraw", code=code, clause="AST-01")
             keeper.accepted("assist", op="release", clause="AST-01")
         status = keeper.status()
+        keeper.answered(keeper.send("halt"))
         if status["activity"] == "moving" or status["queued"] or status["scheduled"]:
-            keeper.send("halt")
             self._rest(keeper)
-            status = keeper.status()
+        status = keeper.status()
         self._free_lease(status)
         status = keeper.status()
         if status["unconfirmed"] or status["fault_latch"] or status["activity"] != "idle":
             self._tidy(keeper)
+        if self.raised and any(not entry.told for entry in self.fault_entries(keeper)):
+            keeper.restart()  # notices that nobody confirmed would be told into the next case
         self.port.wait_ms(0)
 
     def _rest(self, keeper: Tester) -> None:

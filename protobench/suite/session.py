@@ -125,14 +125,15 @@ class Session:
             self._attempt(lambda: self.bench.begin(info.id), found)
             if not found:
                 self._attempt(lambda: info.function(self.bench), found)
-            if not any(verdict is Verdict.ERROR for verdict, _ in found):
-                self._attempt(self.bench.end, found, "postamble: ")
+            self._attempt(self.bench.end, found, "postamble: ")
             found += [
                 (Verdict.FAIL, f"{violation.clause}: {violation.reason}")
                 for violation in self.bench.port.watch.violations
             ]
         except NotApplicable as why:
-            return NOT_APPLICABLE, str(why), ""
+            self._attempt(self.bench.end, found, "postamble: ")
+            if not found:
+                return NOT_APPLICABLE, str(why), ""
         except LinkError as error:
             found.append((Verdict.FAIL, f"LOD-02: the link to the module ended: {error}"))
             detail = self._detail()

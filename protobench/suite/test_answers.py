@@ -211,7 +211,7 @@ def test_refusal_harmless(bench: Bench) -> None:
         a.send("clear-faults", occurrences=[77]),
         a.send("release-lease", epoch=a.epoch + 1),
         a.send(0x3A),
-        a.send("cancel", number=12345),
+        a.send("cancel", target=12345),
     ):
         if a.answered(sent).get("result") != "refused":
             raise Failed(f"{sent.kind} must be refused here", clause="ACK-06")

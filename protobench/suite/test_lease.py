@@ -227,7 +227,7 @@ def test_no_extension(bench: Bench) -> None:
         lambda: a.answered(a.send("status")),
         lambda: a.answered(a.send("describe")),
         lambda: a.answered(a.send("halt")),
-        lambda: a.answered(a.send("cancel", number=1)),
+        lambda: a.answered(a.send("cancel", target=1)),
         lambda: a.answered(a.send("energize", epoch=a.epoch + 1)),
         lambda: b.answered(b.send("renew-lease", duration=30_000)),
         lambda: b.answered(b.send("take-lease", duration=30_000)),

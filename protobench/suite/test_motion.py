@@ -239,7 +239,7 @@ def test_predecessor(bench: Bench) -> None:
     first = a.move(bench.facts.stoppable().name)
     second = a.move()
     bench.port.wait_ms(10)
-    a.accepted("cancel", number=first.number, clause="MOT-08")
+    a.accepted("cancel", target=first.number, clause="MOT-08")
     a.ended(first, "cancelled", "cancel", "MOT-08")
     never = a.ended(second, "cancelled", "predecessor", "MOT-06")
     if never["displacement"] or never["duration_ms"]:
@@ -259,7 +259,7 @@ def test_cancel_queued(bench: Bench) -> None:
         raise NotApplicable("the queue holds one motion only")
     a.make_ready()
     moves = [a.move() for _ in range(3)]
-    a.accepted("cancel", number=moves[1].number, clause="MOT-08")
+    a.accepted("cancel", target=moves[1].number, clause="MOT-08")
     a.ended(moves[1], "cancelled", "cancel", "MOT-08")
     a.ended(moves[2], "cancelled", "predecessor", "MOT-06")
     a.ended(moves[0], "done", "none", "MOT-08")
@@ -283,7 +283,7 @@ def test_cancel_running(bench: Bench) -> None:
         position = a.status()["position"]
         move = a.move(facts.name)
         bench.port.wait_ms(facts.stoppable_ms / 4)
-        sent = a.accepted("cancel", **({"number": move.number} if with_number else {}), clause="MOT-08")
+        sent = a.accepted("cancel", **({"target": move.number} if with_number else {}), clause="MOT-08")
         outcome = a.ended(move, "cancelled", "cancel", "MOT-08")
         _check_stopped(bench, sent, move, outcome)
         status = a.status()
@@ -336,12 +336,12 @@ def test_cancel_all(bench: Bench) -> None:
 def test_cancel_unknown(bench: Bench) -> None:
     a = bench.a
     a.make_ready()
-    a.refused("no-such-motion", "cancel", number=a.next_number(), clause="MOT-09")
+    a.refused("no-such-motion", "cancel", target=a.next_number(), clause="MOT-09")
     a.accepted("cancel", clause="MOT-09")
     if bench.facts.has("travel"):
         move = a.move()
         a.ended(move, "done", "none", "MOT-04")
-        a.refused("no-such-motion", "cancel", number=move.number, clause="MOT-09")
+        a.refused("no-such-motion", "cancel", target=move.number, clause="MOT-09")
 
 
 @case(
@@ -356,7 +356,7 @@ def test_cancel_other_session(bench: Bench) -> None:
     a.make_ready()
     move = a.move()
     b.lease = a.lease
-    b.refused("not-holder", "cancel", number=move.number, clause="LSE-03")
+    b.refused("not-holder", "cancel", target=move.number, clause="LSE-03")
     b.refused("not-holder", "cancel", clause="LSE-03")
     a.ended(move, "done", "none", "MOT-20")
 
@@ -374,7 +374,7 @@ def test_cancel_past_return(bench: Bench) -> None:
     a.hold("committed")
     move = a.move(bench.facts.ballistic().name)
     bench.port.wait_ms(bench.facts.ballistic().no_return_ms + 20)
-    a.accepted("cancel", number=move.number, clause="MOT-10")
+    a.accepted("cancel", target=move.number, clause="MOT-10")
     a.release_hold()
     outcome = a.outcome(move)
     a.confirm(outcome)
@@ -399,7 +399,7 @@ def test_cancel_race(bench: Bench) -> None:
     for shift_ms in (-3, -1, 0, 1, 3):
         move = a.move(facts.name)
         bench.port.wait_until(move.time_ns + round((facts.typical_ms + shift_ms) * 1e6))
-        receipt = a.answered(a.send("cancel", number=move.number))
+        receipt = a.answered(a.send("cancel", target=move.number))
         if receipt.get("result") != "accepted" and receipt.get("reason") != "no-such-motion":
             raise Failed(f"a cancel racing the end was {answer_words(receipt)}", clause="MOT-10")
         outcome = a.outcome(move)
@@ -480,7 +480,7 @@ def test_start_refused(bench: Bench) -> None:
     start, _ = _clock_in(a, 59_900)
     far = a.move(start_at=start)
     position = a.status()["position"]
-    a.accepted("cancel", number=far.number, clause="MOT-08")
+    a.accepted("cancel", target=far.number, clause="MOT-08")
     a.ended(far, "cancelled", "cancel", "MOT-08")
     if a.status()["position"] != position or a.status()["activity"] != "energized":
         raise Failed("a motion with a refused or far start was begun", clause="MOT-12")

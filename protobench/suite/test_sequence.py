@@ -313,6 +313,7 @@ def test_reads_free(bench: Bench) -> None:
     ahead = a.read("status", number=number + 20 & 0xFFFFFFFF)
     a.accepted("renew-lease", duration=9000, clause="SEQ-11")
     a.accepted("renew-lease", duration=9000, number=ahead.frame.number, clause="SEQ-11")
+    a.use_number(ahead.frame.number)
 
 
 @case(

@@ -23,7 +23,7 @@ class Tester:
     """One (address, session) as the module sees it.
 
     Fields ``epoch`` and ``lease`` of requests are filled in with what this tester believes, unless given;
-    ``None`` for a field leaves it out. Enumerations are given and received by name.
+    ``None`` for a field leaves it out; ``target`` is the field ``number`` of cancel. Enumerations are given and received by name.
     """
 
     def __init__(self, bench: Bench, address: int, rng: random.Random) -> None:
@@ -80,6 +80,8 @@ class Tester:
 
     def _filled(self, kind: str, to: int | None, fields: dict[str, Any]) -> dict[str, Any]:
         filled = dict(fields)
+        if "target" in filled:  # the field that cancel calls number, as every header does
+            filled["number"] = filled.pop("target")
         needed = self.bench.fence_fields(kind, many=to is not None and self.bench.is_many(to))
         for name in needed:
             filled.setdefault(name, getattr(self, name))
