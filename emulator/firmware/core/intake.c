@@ -245,11 +245,8 @@ static uint32_t halt_window_ms(const struct pb_header *header, const uint8_t *fr
 static void take_halt(struct pb_module *module, const struct pb_header *header, const uint8_t *frame, size_t size)
 {
     const uint8_t disposition = pb_state_halt(module, PB_HALT_CAUSE_REQUEST);
-    const uint8_t unanswerable = check_source(module, header);
-    if (unanswerable != 0) {
-        pb_intake_drop(module, unanswerable);
-        return;
-    }
+    if (!pb_address_is_unicast(header->source) || header->source == module->address)
+        return; /* nobody to answer; neither a drop nor a fault */
     struct pb_answer answer = pb_answer_to(module, header, PB_KIND_HALT_RECEIPT);
     answer.first = disposition;
     answer.second = module->state.halt_count;

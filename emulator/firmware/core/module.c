@@ -152,7 +152,7 @@ void pb_module_link_ready(struct pb_module *module)
 
 void pb_module_link_lost(struct pb_module *module)
 {
-    if (pb_stream_is_inside(&module->stream))
+    if (pb_stream_is_inside(&module->stream) && !module->stream.too_long)
         pb_intake_drop(module, PB_DROP_HALF_FRAME);
     pb_stream_reset(&module->stream);
     module->any_sent = false;

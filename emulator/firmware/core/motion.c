@@ -84,10 +84,10 @@ static uint8_t outcome_of(uint8_t cause, bool has_begun)
     return cause == PB_CAUSE_FAULT && has_begun ? PB_OUTCOME_FAILED : PB_OUTCOME_CANCELLED;
 }
 
-/* A motion that waits will never begin. One that has failed already (late) keeps its reason. */
+/* A motion that waits will never begin. */
 static void end_waiting(struct pb_slot *slot, uint8_t cause)
 {
-    if (slot->ending && (slot->cause == PB_CAUSE_LATE || strength(cause) <= strength(slot->cause)))
+    if (slot->ending && strength(cause) <= strength(slot->cause))
         return;
     slot->ending = true;
     slot->cause = cause;
@@ -148,21 +148,34 @@ void pb_motion_stop_all(struct pb_module *module, uint8_t cause)
     form_ending(module);
 }
 
+/* The first motion that waits behind the one of that order and may still begin. */
+static struct pb_slot *queued_behind(struct pb_module *module, uint32_t order)
+{
+    struct pb_slot *first = NULL;
+    for (unsigned i = 0; i < module->config->outcomes; i++) {
+        struct pb_slot *slot = &module->slots.slots[i];
+        if (slot->state == PB_SLOT_QUEUED && !slot->ending && (int32_t)(slot->order - order) > 0 &&
+            (first == NULL || (int32_t)(slot->order - first->order) < 0))
+            first = slot;
+    }
+    return first;
+}
+
 void pb_motion_cancel(struct pb_module *module, struct pb_slot *slot)
 {
     if (slot->state == PB_SLOT_RUNNING) {
         stop_running(module, PB_CAUSE_CANCEL);
         return;
     }
-    if (slot->state == PB_SLOT_QUEUED)
-        for (unsigned i = 0; i < module->config->outcomes; i++) {
-            struct pb_slot *other = &module->slots.slots[i];
-            if (other->state == PB_SLOT_QUEUED && (int32_t)(other->order - slot->order) > 0)
-                end_waiting(other, PB_CAUSE_PREDECESSOR);
-        }
+    const bool was_queued = slot->state == PB_SLOT_QUEUED;
+    const uint32_t order = slot->order;
     end_waiting(slot, PB_CAUSE_CANCEL);
-    pb_slots_form(module, slot, 0, 0); /* it needs no rest */
-    form_ending(module);
+    pb_slots_form(module, slot, 0, 0); /* it needs no rest, nor do those behind it */
+    struct pb_slot *other;
+    while (was_queued && (other = queued_behind(module, order)) != NULL) {
+        end_waiting(other, PB_CAUSE_PREDECESSOR);
+        pb_slots_form(module, other, 0, 0);
+    }
 }
 
 /* ------------------------------------------------------------------------------------------------ phases */
@@ -258,10 +271,9 @@ static bool may_begin(const struct pb_module *module)
 
 static void fail_waiting(struct pb_module *module, struct pb_slot *slot, uint8_t cause)
 {
-    slot->ending = true;
     slot->outcome = PB_OUTCOME_FAILED;
     slot->cause = cause;
-    form_ending(module);
+    pb_slots_form(module, slot, 0, 0);
 }
 
 /* Phase ready is over: the motion starts. Bonds may have opened since the request was judged. */

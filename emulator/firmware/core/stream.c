@@ -20,8 +20,9 @@ bool pb_stream_expire(struct pb_stream *stream, uint64_t now_us)
 {
     if (!pb_stream_is_inside(stream) || now_us - stream->last_byte_us <= EXPIRY_US)
         return false;
+    const bool was_told = stream->too_long;
     pb_stream_reset(stream);
-    return true;
+    return !was_told;
 }
 
 enum pb_stream_step pb_stream_take(struct pb_stream *stream, uint64_t now_us, uint8_t byte)
@@ -33,11 +34,13 @@ enum pb_stream_step pb_stream_take(struct pb_stream *stream, uint64_t now_us, ui
         if (stream->size == 0)
             return PB_STREAM_MORE; /* fill */
         stream->ended = true;
-        return stream->too_long ? PB_STREAM_TOO_LONG : PB_STREAM_BLOCK;
+        return stream->too_long ? PB_STREAM_MORE : PB_STREAM_BLOCK;
     }
-    if (stream->size < sizeof stream->block)
+    if (stream->size < sizeof stream->block) {
         stream->block[stream->size++] = byte;
-    else
-        stream->too_long = true;
-    return PB_STREAM_MORE;
+        return PB_STREAM_MORE;
+    }
+    const bool was_told = stream->too_long;
+    stream->too_long = true;
+    return was_told ? PB_STREAM_MORE : PB_STREAM_TOO_LONG;
 }
