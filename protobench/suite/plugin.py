@@ -9,16 +9,17 @@ does not apply is skipped, with the item that says so.
 
 from __future__ import annotations
 
+import dataclasses
+import inspect
 from collections.abc import Iterator
-from typing import Any
+from typing import TYPE_CHECKING
 
 import pytest
 
-from protobench.judge import NOT_APPLICABLE
-from protobench.suite.bench import Bench
-from protobench.suite.case import CaseInfo
-from protobench.suite.options import RunOptions
-from protobench.suite.session import Session
+if TYPE_CHECKING:
+    from protobench.suite.bench import Bench
+    from protobench.suite.case import CaseInfo
+    from protobench.suite.session import Session
 
 
 def pytest_addoption(parser: pytest.Parser) -> None:
@@ -34,6 +35,10 @@ def pytest_addoption(parser: pytest.Parser) -> None:
 @pytest.fixture(scope="session")
 def bench_session(request: pytest.FixtureRequest) -> Iterator[Session]:
     """The link to the module, for all cases of the run."""
+    # Imported here: the plugin is loaded by every run of pytest in this environment, the bench by few.
+    from protobench.suite.options import RunOptions  # noqa: PLC0415
+    from protobench.suite.session import Session  # noqa: PLC0415
+
     config = request.config
     options = RunOptions(
         link=config.getoption("--link"),
@@ -54,35 +59,29 @@ def bench(bench_session: Session) -> Bench:
 @pytest.hookimpl(tryfirst=True)
 def pytest_pyfunc_call(pyfuncitem: pytest.Function) -> bool | None:
     """Judge a test that takes ``bench`` as a case."""
-    session = _session_of(pyfuncitem)
-    if session is None:
+    session: Session | None = pyfuncitem.funcargs.get("bench_session")
+    if session is None or "bench" not in pyfuncitem.funcargs:
         return None
-    arguments = {name: pyfuncitem.funcargs[name] for name in pyfuncitem._fixtureinfo.argnames}
-    record = session.judge(_info(pyfuncitem, arguments))
-    if record.verdict == NOT_APPLICABLE:
+    record = session.judge(_info(pyfuncitem))
+    if record.verdict == "not_applicable":
         pytest.skip(record.reason)
     if record.verdict != "pass":
-        pytest.fail(
-            f"{record.verdict}: {record.reason}\n{record.detail}\nagain: {record.replay}", pytrace=False
-        )
+        words = f"{record.verdict}: {record.reason}\n{record.detail}\nagain: {record.replay}"
+        pytest.fail(words, pytrace=False)
     return True
 
 
-def _session_of(item: pytest.Function) -> Session | None:
-    if not isinstance(item.funcargs.get("bench"), Bench):
-        return None
-    session: Session = item._request.getfixturevalue("bench_session")
-    return session
-
-
-def _info(item: pytest.Function, arguments: dict[str, Any]) -> CaseInfo:
+def _info(item: pytest.Function) -> CaseInfo:
     """The case as registered, or one made from the test's name; it is called with the test's own arguments."""
-    known: CaseInfo | None = getattr(item.function, "case_info", None)
+    from protobench.suite.case import CaseInfo  # noqa: PLC0415
+
+    arguments = {name: item.funcargs[name] for name in inspect.signature(item.obj).parameters}
 
     def call(bench: Bench) -> None:
         item.obj(**{**arguments, "bench": bench})
 
+    known: CaseInfo | None = getattr(item.function, "case_info", None)
+    if known is not None:
+        return dataclasses.replace(known, function=call)
     purpose = (item.function.__doc__ or item.name).strip().splitlines()[0]
-    if known is None:
-        return CaseInfo(item.name, "required", "valid", purpose, (), "", call)
-    return CaseInfo(known.id, known.level, known.case_class, known.purpose, known.clauses, known.needs, call)
+    return CaseInfo(item.name, "required", "valid", purpose, (), "", call)

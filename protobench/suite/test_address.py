@@ -242,13 +242,30 @@ def test_newer_replaces(bench: Bench) -> None:
 )
 def test_unicast_first(bench: Bench) -> None:
     for _ in range(5):
-        bench.b.send("probe", to=bench.broadcast, answer_window=2000)
+        bench.b.send("probe", to=bench.broadcast, answer_window=300)
         sent = bench.a.send("status")
         answer = bench.a.answered(sent)
         delay_ms = (answer.time_ns - sent.time_ns) / 1e6
         if delay_ms > bench.facts.receipt_ms + bench.port.u_ms + PATIENCE_REAL_MS:
             raise Failed(f"a unicast answer took {delay_ms:.1f} ms beside a waiting one", clause="ADR-09")
-    bench.b.send("probe", to=bench.broadcast)
+    bench.port.wait_ms(300 + bench.facts.receipt_ms + bench.port.u_ms)
+
+
+@case(
+    "ADR.none-replaces",
+    "valid",
+    "A newer request to many that asks for no answer takes the waiting one away too.",
+    clauses=["ADR-08"],
+)
+def test_none_replaces(bench: Bench) -> None:
+    sent = bench.a.send("probe", to=bench.broadcast, answer_window=400)
+    newer = bench.a.send("probe", to=bench.broadcast)
+    answer = bench.a.answer(sent, 400 + bench.a.patience_ms)
+    if (
+        answer is not None
+        and answer.time_ns - newer.time_ns > (bench.facts.receipt_ms + bench.port.u_ms) * 1e6
+    ):
+        raise Failed("a request to many without a window left the waiting answer", clause="ADR-08")
 
 
 @case("ADR.confirm-to-many", "invalid", "A confirm to many is refused silently.", clauses=["ADR-05"])

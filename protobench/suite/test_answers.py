@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 from protobench.judge import Failed, Inconclusive
 from protobench.suite.bench import CONTROLLER_A, Bench
 from protobench.suite.case import case
@@ -200,21 +202,22 @@ def test_refusal_harmless(bench: Bench) -> None:
     before = a.status()
     bench.port.wait_ms(50)
     b.lease = a.lease
-    for sent in (
-        b.send("de-energize"),
-        b.send("release-lease"),
-        b.send("take-lease", duration=1000),
-        b.send("renew-lease", duration=1000),
-        a.send("renew-lease", duration=100),
-        a.send("move", motion=99),
-        a.send("reset", halt_count=before["halt_count"] + 1),
-        a.send("clear-faults", occurrences=[77]),
-        a.send("release-lease", epoch=a.epoch + 1),
-        a.send(0x3A),
-        a.send("cancel", target=12345),
-    ):
-        if a.answered(sent).get("result") != "refused":
-            raise Failed(f"{sent.kind} must be refused here", clause="ACK-06")
+    requests: list[tuple[Tester, str | int, dict[str, Any]]] = [
+        (b, "de-energize", {}),
+        (b, "release-lease", {}),
+        (b, "take-lease", {"duration": 1000}),
+        (b, "renew-lease", {"duration": 1000}),
+        (a, "renew-lease", {"duration": 100}),
+        (a, "move", {"motion": 99}),
+        (a, "reset", {"halt_count": before["halt_count"] + 1}),
+        (a, "clear-faults", {"occurrences": [77]}),
+        (a, "release-lease", {"epoch": a.epoch + 1}),
+        (a, 0x3A, {}),
+        (a, "cancel", {"target": 12345}),
+    ]
+    for tester, kind, fields in requests:
+        if tester.ask(kind, **fields).get("result") != "refused":
+            raise Failed(f"{kind} must be refused here", clause="ACK-06")
     after = a.status()
     changed = [
         name

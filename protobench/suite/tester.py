@@ -26,6 +26,8 @@ class Tester:
     ``None`` for a field leaves it out; ``target`` is the field ``number`` of cancel. Enumerations are given and received by name.
     """
 
+    __test__ = False  # pytest shall not take the class for tests
+
     def __init__(self, bench: Bench, address: int, rng: random.Random) -> None:
         self.bench = bench
         self.port: Port = bench.port
