@@ -12,7 +12,7 @@ from __future__ import annotations
 import dataclasses
 import inspect
 from collections.abc import Iterator
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, cast
 
 import pytest
 
@@ -59,7 +59,7 @@ def bench(bench_session: Session) -> Bench:
 @pytest.hookimpl(tryfirst=True)
 def pytest_pyfunc_call(pyfuncitem: pytest.Function) -> bool | None:
     """Judge a test that takes ``bench`` as a case."""
-    session: Session | None = pyfuncitem.funcargs.get("bench_session")
+    session = cast("Session | None", pyfuncitem.funcargs.get("bench_session"))
     if session is None or "bench" not in pyfuncitem.funcargs:
         return None
     record = session.judge(_info(pyfuncitem))

@@ -153,7 +153,8 @@ def test_claims(bench: Bench) -> None:
     bodies = [
         "81", "8105", "82 05 00", "8f", "8105 91", "8105 9f00", "8105 a5 6161", "8105 c4", "8105 c420 00", "8105 cc",
         "8105 cd00", "8105 ce000000", "8105 cf00000000000000", "8105 d9", "8105 dc", "8105 dd ffffffff",
-        "8105 df ffffffff",         "8105 c6 ffffffff", "8105 db ffffffff", "df ffffffff", "de ffff", "8105 c9 ffffffff 00",
+        "8105 df ffffffff", "8105 c6 ffffffff",
+        "8105 db ffffffff", "df ffffffff", "de ffff", "8105 c9 ffffffff 00",
     ]  # fmt: skip
     _refuse_all(bench, [bytes.fromhex(body) for body in bodies], "BDY-07")
 

@@ -23,7 +23,8 @@ class Tester:
     """One (address, session) as the module sees it.
 
     Fields ``epoch`` and ``lease`` of requests are filled in with what this tester believes, unless given;
-    ``None`` for a field leaves it out; ``target`` is the field ``number`` of cancel. Enumerations are given and received by name.
+    ``None`` for a field leaves it out; ``target`` is the field ``number`` of cancel. Enumerations are given and
+    received by name.
     """
 
     __test__ = False  # pytest shall not take the class for tests

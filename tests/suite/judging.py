@@ -5,6 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 
 import pytest
+
 from protobench.judge import RunRecord
 from protobench.suite.options import RunOptions
 from protobench.suite.run import run_suite

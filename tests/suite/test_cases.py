@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import pytest
+
 from protobench.contract import load_contract, parse_condition
 from protobench.suite.case import CaseInfo, case
 from protobench.suite.run import list_cases
@@ -70,7 +71,12 @@ def test_select_refuses_what_it_cannot_read(expression: str) -> None:
 
 @pytest.mark.parametrize(
     ("case_id", "case_class", "level"),
-    [("framing", "valid", "required"), ("FRM.x", "good", "required"), ("FRM.x", "valid", "must"), ("FRM.X", "valid", "required")],
+    [
+        ("framing", "valid", "required"),
+        ("FRM.x", "good", "required"),
+        ("FRM.x", "valid", "must"),
+        ("FRM.X", "valid", "required"),
+    ],
 )
 def test_a_badly_described_case_is_refused(case_id: str, case_class: str, level: str) -> None:
     with pytest.raises(ValueError, match="case"):

@@ -9,6 +9,7 @@ from emulator.config import ModuleConfig
 from emulator.engine import ModuleEngine
 from emulator.storage import MemoryStorage
 from judging import expect_sound, firmware, judge
+
 from protobench.contract import load_contract
 from protobench.links import MemoryLink
 
