@@ -99,7 +99,7 @@ void options_read(struct options *options, int argc, char **argv, const char *pu
         if (!take_valued(options, argv[i], i + 1 < argc ? argv[i + 1] : "0", takes_port))
             fail(options, "argument", argv[i], "not known; --help shows what is");
         if (++i == argc)
-            fail(options, argv[i - 1], "", "a value is needed");
+            fail(options, argv[i - 1], "(nothing)", "a value is needed");
     }
 }
 
