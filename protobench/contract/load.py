@@ -87,9 +87,9 @@ def _read(folder: Path, name: str, model: type[Model], problems: list[Problem]) 
         if path.stat().st_size > FILE_SIZE_MAX:
             raise ValueError(f"longer than {FILE_SIZE_MAX} bytes")
         data = tomllib.loads(path.read_text(encoding="utf-8"))
-        return model.model_validate(_tuples(data))
+        return model.model_validate(tuples(data))
     except pd.ValidationError as error:
-        problems += [Problem(file, entry["loc"], _rule(entry)) for entry in error.errors(include_url=False)]
+        problems += [Problem(file, entry["loc"], plain_rule(entry)) for entry in error.errors(include_url=False)]
     except OSError as error:
         problems.append(Problem(file, (), f"cannot be read from {folder}: {error.strerror}"))
     except (ValueError, RecursionError) as error:
@@ -97,16 +97,17 @@ def _read(folder: Path, name: str, model: type[Model], problems: list[Problem]) 
     return None
 
 
-def _rule(entry: Any) -> str:
+def plain_rule(entry: Any) -> str:
+    """Return one error of pydantic as a rule, with the value that breaks it."""
     value = entry["input"]
     rule = str(entry["msg"]).removeprefix("Value error, ")
     return f"{rule}; found {value!r}" if isinstance(value, str | int | float | bool) else rule
 
 
-def _tuples(data: Any) -> Any:
-    """Lists become tuples, so that what is loaded cannot change."""
+def tuples(data: Any) -> Any:
+    """Return data with tuples for its lists, so that what is loaded cannot change."""
     if isinstance(data, list):
-        return tuple(_tuples(item) for item in data)
+        return tuple(tuples(item) for item in data)
     if isinstance(data, dict):
-        return {key: _tuples(value) for key, value in data.items()}
+        return {key: tuples(value) for key, value in data.items()}
     return data
