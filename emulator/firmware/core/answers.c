@@ -71,7 +71,7 @@ void pb_answers_queue_many(struct pb_module *module, const struct pb_answer *ans
     if (found == NULL)
         return;
     struct pb_many_answer *place = &module->answers.many[found - module->answers.many];
-    place->waiting = true;
+    place->waiting = window_ms > 0;
     place->answer = *answer;
     place->answer.due_us = module->now_us + pb_random_up_to(&module->random, 1000u * window_ms);
 }

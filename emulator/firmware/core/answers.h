@@ -55,7 +55,7 @@ void pb_answers_queue_halt(struct pb_module *module, const struct pb_answer *ans
 
 bool pb_answers_have_room_for_many(const struct pb_module *module, const struct pb_header *header);
 
-/* Leaves at an instant drawn from the window; takes the place of one that waits for the same session. */
+/* Leaves at an instant drawn from the window; none of 0 ms leaves. What waited for the same session does not. */
 void pb_answers_queue_many(struct pb_module *module, const struct pb_answer *answer, uint32_t window_ms);
 
 /* Whether the unicast answer of that serial has been sent. */

@@ -36,7 +36,7 @@ struct pb_value pb_body_value(const struct pb_body *body, uint8_t key, const uin
  * item that is a list or a map comes back as such and ends the walk. */
 struct pb_value pb_body_item(const struct pb_body *body, const uint8_t **contents);
 
-/* The lowest key that must be understood and is not in the bounds first..last-of-kind list; 0 when there is none. */
+/* The lowest key of the body that must be understood and is not among the known ones; 0 when there is none. */
 uint8_t pb_body_unknown_critical(const struct pb_body *body, const uint8_t *known, size_t known_count);
 
 #endif

@@ -7,7 +7,7 @@ static const uint32_t REPEAT_FIRST_MS = PB_LIMIT_FAULT_REPEAT_FIRST;
 static const uint32_t REPEAT_SLOWEST_MS = PB_LIMIT_FAULT_REPEAT_SLOWEST;
 static const uint64_t SPACING_US = 1000u * PB_LIMIT_FAULT_EVENT_SPACING;
 
-/* A notice is sent once and repeated as often as an outcome. */
+/* A notice is sent once and, by clause FLT-17, repeated at most four times. */
 enum { NOTICE_SENDINGS = 1 + 4 };
 
 struct fault_kind {

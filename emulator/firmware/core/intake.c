@@ -177,10 +177,10 @@ static void take_from_many(struct pb_module *module, const struct pb_request *re
     }
     if (!may_act(module, request, &receipt)) {
         refuse_silently(module);
-    } else if (window_ms(request) > 0) {
-        const struct pb_answer answer = accepted_answer(module, request, &receipt);
-        pb_answers_queue_many(module, &answer, window_ms(request));
+        return;
     }
+    const struct pb_answer answer = accepted_answer(module, request, &receipt);
+    pb_answers_queue_many(module, &answer, window_ms(request));
 }
 
 static void take_request(struct pb_module *module, const struct pb_request *request)
@@ -254,9 +254,7 @@ static void take_halt(struct pb_module *module, const struct pb_header *header, 
         pb_answers_queue_halt(module, &answer);
         return;
     }
-    const uint32_t window = halt_window_ms(header, frame, size);
-    if (window > 0)
-        pb_answers_queue_many(module, &answer, window);
+    pb_answers_queue_many(module, &answer, halt_window_ms(header, frame, size));
 }
 
 /* ------------------------------------------------------------------------------------------------ the order */

@@ -3,11 +3,6 @@
 #include "bytes.h"
 #include "module.h"
 
-static bool is_bonding(uint8_t motion)
-{
-    return motion == PB_MOTION_BOND || motion == PB_MOTION_UNBOND;
-}
-
 void pb_motion_start(struct pb_module *module)
 {
     pb_clear(&module->motion, sizeof module->motion);
@@ -280,8 +275,7 @@ static void fail_waiting(struct pb_module *module, struct pb_slot *slot, uint8_t
 static void begin(struct pb_module *module, struct pb_slot *slot)
 {
     struct pb_motion *motion = &module->motion;
-    if (is_bonding(slot->motion) && !slot->allow_last_bond &&
-        pb_motion_is_last_bond(module, slot->motion, slot->face)) {
+    if (!slot->allow_last_bond && pb_motion_is_last_bond(module, slot->motion, slot->face)) {
         const bool was_queued = slot->state == PB_SLOT_QUEUED;
         fail_waiting(module, slot, PB_CAUSE_LAST_BOND);
         if (was_queued)
