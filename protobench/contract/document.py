@@ -181,17 +181,18 @@ def _states(contract: Contract) -> Iterator[str]:
     yield "At power-on: " + ", ".join(f"{name} {_word(value)}" for name, value in initial) + "."
     yield from (f"On the same instant, inputs are taken in this order: {', '.join(table.order)}.", "")
     yield from ("### Displayed state", "", "The first row that fits.", "")
-    yield from _table(
-        ("Displayed", "Activity", "Halt latch", "Fault latch"),
-        ((row.state, _factor(row.activity), _factor(row.halt), _factor(row.fault)) for row in table.file.displayed),
+    rows = (
+        (row.state, *(_factor(getattr(row, name)) for name in ("activity", "halt", "fault")))
+        for row in table.file.displayed
     )
+    yield from _table(("Displayed", "Activity", "Halt latch", "Fault latch"), rows)
     yield from ("```mermaid", state_diagram(contract), "```", "")
     yield from ("### Inputs", "")
     yield from _table(("Input", "Class", "Meaning"), ((row.name, row.class_, row.text) for row in table.inputs))
     yield from ("### State table", "")
     yield "Every state and input has exactly one row. Where the next activity is *declared*, it is idle, unless an"
-    yield "actuator declares stop category 2 for every cause that applies: halt (halt latch set), fault (fault latch set),"
-    yield from ("lease end (lease free); then it is energized.", "")
+    yield "actuator declares stop category 2 for every cause that applies: halt (halt latch set), fault (fault latch"
+    yield from ("set), lease end (lease free); then it is energized.", "")
     head = ("Input", "Activity", "Halt", "Fault", "Lease", "Answer", "Next")
     yield from _table(head, (_transition(row) for row in table.file.transition))
 

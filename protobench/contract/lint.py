@@ -12,12 +12,13 @@ from protobench.contract.kinds import Field
 from protobench.contract.load import load_contract, spec_root
 from protobench.contract.model import Contract
 from protobench.contract.problems import ContractError, Problem
+from protobench.contract.problems import Path as ItemPath
 from protobench.contract.sizes import longest_body
 from protobench.contract.tables import DropStage, Limit, RefusalStage
 from protobench.contract.versions import compare
 
 QUOTED = re.compile(r"`([^`]*)`")
-# A field of a request whose range is the range of a limit.
+# A field whose range is that of a limit of another name: kind, field, limit.
 BOUND_BY_LIMIT = (
     ("take-lease", "duration", "lease_duration"),
     ("renew-lease", "duration", "lease_duration"),
@@ -75,7 +76,7 @@ def _bodies(contract: Contract) -> Iterator[Problem]:
             yield from _bounds(contract, field, ("kind", index, "fields", place))
 
 
-def _bounds(contract: Contract, field: Field, path: tuple[str | int, ...]) -> Iterator[Problem]:
+def _bounds(contract: Contract, field: Field, path: ItemPath) -> Iterator[Problem]:
     body = contract.frame.body
     bounds = (
         ("size", field.size, body.binary_size_max),
@@ -95,20 +96,31 @@ def _bounds(contract: Contract, field: Field, path: tuple[str | int, ...]) -> It
         yield Problem("kinds.toml", (*path, "record"), rule)
 
 
+def _field(contract: Contract, kind_name: str, field_name: str) -> tuple[ItemPath, Field] | Problem:
+    """Return path and field, or the problem that there is none."""
+    for index, kind in enumerate(contract.kinds):
+        if kind.name != kind_name:
+            continue
+        for place, field in enumerate(kind.fields):
+            if field.name == field_name:
+                return ("kind", index, "fields", place), field
+        return Problem("kinds.toml", ("kind", index, "fields"), f"{kind_name} has no field {field_name!r}")
+    return Problem("kinds.toml", ("kind",), f"there is no kind {kind_name!r}")
+
+
 def _limits(contract: Contract) -> Iterator[Problem]:
-    index_of = {kind.name: index for index, kind in enumerate(contract.kinds)}
-    bound = [row for row in BOUND_BY_LIMIT if row[0] in index_of]
-    bound += [
-        (kind.name, field.name, field.name)
-        for kind in contract.kinds
-        for field in kind.fields
-        if field.name in contract.limits
-    ]
+    named = [(kind.name, field.name) for kind in contract.kinds for field in kind.fields]
+    bound = [*BOUND_BY_LIMIT, *((kind, field, field) for kind, field in named if field in contract.limits)]
     for kind_name, field_name, limit_name in bound:
-        field, limit = contract.kind(kind_name).field(field_name), contract.limit(limit_name)
-        if (field.min, field.max) != (limit.min, limit.max):
-            rule = f"{field_name} is {field.min}..{field.max}, limit {limit_name} {limit.min}..{limit.max}"
-            yield Problem("kinds.toml", ("kind", index_of[kind_name], "fields"), f"{kind_name}: {rule}")
+        found = _field(contract, kind_name, field_name)
+        limit = contract.limits.get(limit_name)
+        if isinstance(found, Problem):
+            yield found
+        elif limit is None:
+            yield Problem("limits.toml", ("limit",), f"there is no limit {limit_name!r}, for {kind_name}.{field_name}")
+        elif (found[1].min, found[1].max) != (limit.min, limit.max):
+            rule = f"{field_name} is {found[1].min}..{found[1].max}, limit {limit_name} {limit.min}..{limit.max}"
+            yield Problem("kinds.toml", found[0], f"{kind_name}: {rule}")
 
 
 def _orders(contract: Contract) -> Iterator[Problem]:
@@ -127,11 +139,13 @@ def _order(table: str, rows: Sequence[tuple[str, str]], stages: Sequence[str]) -
 
 
 def _counters(contract: Contract) -> Iterator[Problem]:
-    drops = contract.kind("counters").field("drops")
+    found = _field(contract, "counters", "drops")
     last = max(drop.number for drop in contract.drops)
-    if drops.items_min != last:
-        rule = f"counters.drops has at least {drops.items_min} items, the last drop reason is number {last}"
-        yield Problem("kinds.toml", ("kind", contract.kinds.index(contract.kind("counters")), "fields"), rule)
+    if isinstance(found, Problem):
+        yield found
+    elif found[1].items_min != last:
+        rule = f"counters.drops has at least {found[1].items_min} items, the last drop reason is number {last}"
+        yield Problem("kinds.toml", found[0], rule)
 
 
 def _clauses(contract: Contract) -> Iterator[Problem]:

@@ -17,7 +17,11 @@ def encode(
     kind: str, fields: Mapping[str, Any], source: int, destination: int, session: int, number: int
 ) -> bytes:
     """A bare frame of a worked exchange."""
-    message = load_codec().kind(kind).new(**{name.replace("class", "class_"): value for name, value in fields.items()})
+    message = (
+        load_codec()
+        .kind(kind)
+        .new(**{name.replace("class", "class_"): value for name, value in fields.items()})
+    )
     return message.to_frame(source, destination, session, number)
 
 

@@ -161,7 +161,10 @@ def test_every_drop_reason_is_covered() -> None:
 
 
 def test_every_refusal_for_version_and_form_is_covered() -> None:
-    wanted = {row.name for row in CONTRACT.refusals if row.stage == "form"} | {"unsupported-version", "out-of-range"}
+    wanted = {row.name for row in CONTRACT.refusals if row.stage == "form"} | {
+        "unsupported-version",
+        "out-of-range",
+    }
     assert {result.refusal for result in results() if isinstance(result, Refused)} == wanted
 
 
@@ -204,17 +207,35 @@ def test_vectors_load_from_another_place(spec: Path) -> None:
     [
         (lambda data: data["vectors"][3].update(bytes="0g"), ("vectors", 3, "bytes"), "hex"),
         (lambda data: data["vectors"][2].update(surplus=1), ("vectors", 2, "surplus"), "Extra"),
-        (lambda data: data["vectors"][1].update(id="frame-good"), ("vectors", 1, "id"), "used already, in frame.json"),
-        (lambda data: data["vectors"][1].update(id="body-nil"), ("vectors", 1, "id"), "used already, in body.json"),
+        (
+            lambda data: data["vectors"][1].update(id="frame-good"),
+            ("vectors", 1, "id"),
+            "used already, in frame.json",
+        ),
+        (
+            lambda data: data["vectors"][1].update(id="body-nil"),
+            ("vectors", 1, "id"),
+            "used already, in body.json",
+        ),
         (lambda data: data["vectors"][1].update(gaps_ms=[[1, 5]]), ("vectors", 1), "only a stream has gaps"),
-        (lambda data: data["vectors"][1].update(expect=[{"drop": "no"}]), ("vectors", 1, "expect", 0), "'no'"),
-        (lambda data: data["vectors"][1].update(expect=[{"refusal": "x"}]), ("vectors", 1, "expect", 0), "refusal 'x'"),
+        (
+            lambda data: data["vectors"][1].update(expect=[{"drop": "no"}]),
+            ("vectors", 1, "expect", 0),
+            "'no'",
+        ),
+        (
+            lambda data: data["vectors"][1].update(expect=[{"refusal": "x"}]),
+            ("vectors", 1, "expect", 0),
+            "refusal 'x'",
+        ),
         (lambda data: _meaning(data).update(kind="x"), ("vectors", 0, "expect", 0), "kind 'x'"),
         (lambda data: _meaning(data).update(fields={"x": 1}), ("vectors", 0, "expect", 0), "no field 'x'"),
         (lambda data: data.update(contract="2.0"), ("contract",), "2.0 is not 1.0"),
     ],
 )
-def test_broken_vectors_are_told_with_file_path_and_rule(spec: Path, change: Any, path: Any, rule: str) -> None:
+def test_broken_vectors_are_told_with_file_path_and_rule(
+    spec: Path, change: Any, path: Any, rule: str
+) -> None:
     problem = edit(spec, change).problems[0]
     assert problem.file == "vectors/frame.json"
     assert problem.path == path
