@@ -7,6 +7,7 @@
 #include "answers.h"
 #include "faults.h"
 #include "slots.h"
+#include "writer.h"
 
 struct pb_module;
 
@@ -15,5 +16,9 @@ bool pb_encode_outcome(struct pb_module *module, const struct pb_slot *slot);
 bool pb_encode_fault(struct pb_module *module, const struct pb_fault *fault);
 bool pb_encode_telemetry(struct pb_module *module);
 bool pb_encode_started(struct pb_module *module);
+
+/* Fields that answers and events share. */
+void pb_encode_hardware_id(const struct pb_module *module, struct pb_writer *body, uint8_t key);
+void pb_encode_temperatures(const struct pb_module *module, struct pb_writer *body, uint8_t key);
 
 #endif

@@ -44,11 +44,11 @@ static uint8_t set_groups(struct pb_module *module, const struct pb_request *req
 static void cancel(struct pb_module *module, const struct pb_request *request)
 {
     if (!pb_request_has(request, PB_KEY_CANCEL_NUMBER)) {
-        pb_motion_stop_all(module, PB_CAUSE_CANCEL);
+        pb_ending_stop_all(module, PB_CAUSE_CANCEL);
         return;
     }
     const uint32_t number = (uint32_t)pb_request_number(request, PB_KEY_CANCEL_NUMBER, 0);
-    pb_motion_cancel(module, pb_motion_find(module, request->header.source, request->header.session, number));
+    pb_ending_cancel(module, pb_motion_find(module, request->header.source, request->header.session, number));
 }
 
 static void clear_faults(struct pb_module *module, const struct pb_request *request)
@@ -71,7 +71,7 @@ static void renew(struct pb_module *module, const struct pb_request *request)
 
 static void de_energize(struct pb_module *module)
 {
-    pb_motion_stop_all(module, PB_CAUSE_DE_ENERGIZED);
+    pb_ending_stop_all(module, PB_CAUSE_DE_ENERGIZED);
     pb_state_de_energize(module);
 }
 

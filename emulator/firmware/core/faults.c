@@ -3,13 +3,6 @@
 #include "bytes.h"
 #include "module.h"
 
-static const uint32_t REPEAT_FIRST_MS = PB_LIMIT_FAULT_REPEAT_FIRST;
-static const uint32_t REPEAT_SLOWEST_MS = PB_LIMIT_FAULT_REPEAT_SLOWEST;
-static const uint64_t SPACING_US = 1000u * PB_LIMIT_FAULT_EVENT_SPACING;
-
-/* A notice is sent once and, by clause FLT-17, repeated at most four times. */
-enum { NOTICE_SENDINGS = 1 + 4 };
-
 struct fault_kind {
     uint8_t code;
     uint8_t fault_class;
@@ -85,7 +78,7 @@ static bool must_stay(const struct pb_module *module, const struct pb_fault *fau
         return false;
     if (fault->latched || pb_faults_is_standing(module, fault->code))
         return true;
-    return !pb_fault_is_latching(fault->code) && !fault->told && fault->sendings < NOTICE_SENDINGS;
+    return !pb_fault_is_latching(fault->code) && !fault->told && fault->sendings < PB_NOTICE_SENDINGS;
 }
 
 static struct pb_fault *find_place(struct pb_module *module, uint8_t code)
@@ -116,14 +109,14 @@ static void record(struct pb_module *module, struct pb_fault *fault, uint8_t cod
     fault->clock_us = edge->clock_us;
     fault->value = edge->value;
     fault->event = ++module->event_number;
-    fault->interval_ms = REPEAT_FIRST_MS;
+    fault->interval_ms = PB_LIMIT_FAULT_REPEAT_FIRST;
     fault->next_send_us = module->now_us;
     module->faults.unrecorded &= (uint16_t)~bit(code);
 }
 
 /* Records what found no place, as far as there is place now and its condition still stands. One that is gone is
  * recorded only if the latch it set could not be cleared otherwise, because nothing else is latched. */
-static void record_waiting(struct pb_module *module)
+void pb_faults_record_waiting(struct pb_module *module)
 {
     for (uint8_t code = 1; code < PB_FAULT_CODES && module->faults.unrecorded != 0; code++) {
         if ((module->faults.unrecorded & bit(code)) == 0)
@@ -167,7 +160,7 @@ static void occur(struct pb_module *module, uint8_t code)
     if (!pb_fault_is_latching(code))
         return;
     module->state.fault_latch = true;
-    pb_motion_stop_all(module, PB_CAUSE_FAULT);
+    pb_ending_stop_all(module, PB_CAUSE_FAULT);
     pb_state_settle_power(module);
 }
 
@@ -198,7 +191,7 @@ void pb_faults_happen(struct pb_module *module, uint8_t code)
 void pb_faults_withdraw(struct pb_module *module, uint8_t code)
 {
     module->faults.standing &= (uint16_t)~bit(code);
-    record_waiting(module);
+    pb_faults_record_waiting(module);
 }
 
 struct pb_fault *pb_faults_latched(struct pb_module *module, int64_t occurrence)
@@ -232,44 +225,14 @@ void pb_faults_after_clear(struct pb_module *module)
 {
     if (pb_faults_latched_count(module) == 0)
         module->state.fault_latch = false;
-    record_waiting(module);
+    pb_faults_record_waiting(module);
     if (pb_faults_latched_count(module) > 0)
         module->state.fault_latch = true;
     else
         module->faults.unrecorded &= module->faults.standing;
 }
 
-/* ------------------------------------------------------------------------------------------------ telling */
-
-void pb_faults_announce(struct pb_module *module)
-{
-    for (unsigned i = 0; i <= module->config->faults; i++) {
-        struct pb_fault *fault = &module->faults.list[i];
-        if (!fault->latched)
-            continue;
-        fault->told = false;
-        fault->interval_ms = REPEAT_FIRST_MS;
-        fault->next_send_us = module->now_us;
-    }
-}
-
-bool pb_faults_confirm(struct pb_module *module, const struct pb_header *header, uint32_t event)
-{
-    for (unsigned i = 0; i <= module->config->faults; i++) {
-        struct pb_fault *fault = &module->faults.list[i];
-        if (!fault->used || fault->event != event || fault->told)
-            continue;
-        if (!pb_fault_is_latching(fault->code) || pb_lease_is_holder(module, header->source, header->session)) {
-            fault->told = true;
-            record_waiting(module);
-        } else {
-            fault->interval_ms = REPEAT_SLOWEST_MS;
-            fault->next_send_us = module->now_us + 1000u * (uint64_t)REPEAT_SLOWEST_MS;
-        }
-        return true;
-    }
-    return false;
-}
+/* ------------------------------------------------------------------------------------------------ reading */
 
 unsigned pb_faults_held(const struct pb_module *module)
 {
@@ -302,46 +265,4 @@ void pb_faults_stamp(struct pb_module *module, uint32_t change)
             fault->change = change;
         fault->unstamped = false;
     }
-}
-
-/* When this occurrence wants to be told next, spacing apart. */
-static uint64_t wanted_us(const struct pb_fault *fault)
-{
-    if (!fault->used || fault->told)
-        return PB_NEVER;
-    if (!pb_fault_is_latching(fault->code) && fault->sendings >= NOTICE_SENDINGS)
-        return PB_NEVER;
-    return fault->next_send_us;
-}
-
-uint64_t pb_faults_next_due(const struct pb_module *module)
-{
-    const struct pb_faults *faults = &module->faults;
-    uint64_t due_us = PB_NEVER;
-    for (unsigned i = 0; i <= module->config->faults; i++)
-        due_us = pb_earlier(due_us, wanted_us(&faults->list[i]));
-    if (due_us != PB_NEVER && faults->any_sent && due_us < faults->last_sent_us + SPACING_US)
-        due_us = faults->last_sent_us + SPACING_US;
-    return due_us;
-}
-
-void pb_faults_send_due(struct pb_module *module)
-{
-    struct pb_fault *first = NULL;
-    if (module->link_blocked || pb_faults_next_due(module) > module->now_us)
-        return;
-    for (unsigned i = 0; i <= module->config->faults; i++) {
-        struct pb_fault *fault = &module->faults.list[i];
-        if (wanted_us(fault) <= module->now_us && (first == NULL || fault->occurrence < first->occurrence))
-            first = fault;
-    }
-    if (first == NULL || !pb_encode_fault(module, first))
-        return;
-    module->faults.any_sent = true;
-    module->faults.last_sent_us = module->now_us;
-    first->next_send_us = module->now_us + 1000u * (uint64_t)first->interval_ms;
-    first->interval_ms = first->interval_ms < REPEAT_SLOWEST_MS / 2 ? 2 * first->interval_ms : REPEAT_SLOWEST_MS;
-    if (first->sendings < UINT8_MAX)
-        first->sendings++;
-    record_waiting(module);
 }

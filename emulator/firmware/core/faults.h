@@ -10,6 +10,9 @@
 
 struct pb_module;
 
+/* A notice is sent once and, by clause FLT-17, repeated at most four times. */
+#define PB_NOTICE_SENDINGS 5
+
 #define PB_FAULT_CODES 16 /* codes of the table are below this */
 
 struct pb_fault {
@@ -70,6 +73,9 @@ unsigned pb_faults_latched_count(const struct pb_module *module);
 
 /* Clears what was marked by latched = false: records what waited for a place, opens the latch if none is left. */
 void pb_faults_after_clear(struct pb_module *module);
+
+/* Something may have become free in the list: records what found no place before. */
+void pb_faults_record_waiting(struct pb_module *module);
 
 /* A grant of the lease: every latched occurrence is told afresh. */
 void pb_faults_announce(struct pb_module *module);

@@ -41,6 +41,6 @@ void pb_lease_end(struct pb_module *module)
     module->lease.held = false;
     module->lease.source = 0;
     module->lease.session = 0;
-    pb_motion_stop_all(module, PB_CAUSE_LEASE_END);
+    pb_ending_stop_all(module, PB_CAUSE_LEASE_END);
     pb_state_settle_power(module);
 }

@@ -11,6 +11,7 @@
 #include "assist.h"
 #include "config.h"
 #include "encode.h"
+#include "ending.h"
 #include "faults.h"
 #include "history.h"
 #include "lease.h"

@@ -34,10 +34,6 @@ struct pb_slot *pb_motion_find(struct pb_module *module, uint32_t source, uint32
 /* Whether an unbond of this face would open the only closed bond. */
 bool pb_motion_is_last_bond(const struct pb_module *module, uint8_t motion, uint8_t face);
 
-/* Ends everything that runs or waits, for a cause of the contract. */
-void pb_motion_stop_all(struct pb_module *module, uint8_t cause);
-void pb_motion_cancel(struct pb_module *module, struct pb_slot *slot);
-
 void pb_motion_hold(struct pb_module *module, uint8_t phase);
 void pb_motion_release(struct pb_module *module);
 

@@ -86,7 +86,7 @@ uint8_t pb_state_halt(struct pb_module *module, uint8_t halt_cause)
     module->state.halt_latch = true;
     module->state.halt_count++;
     module->state.halt_cause = halt_cause;
-    pb_motion_stop_all(module, PB_CAUSE_HALT);
+    pb_ending_stop_all(module, PB_CAUSE_HALT);
     pb_state_settle_power(module);
     return disposition;
 }

@@ -1,0 +1,79 @@
+/* Telling faults: fault events, their spacing and repeats, confirms. */
+#include "faults.h"
+#include "module.h"
+
+static const uint32_t REPEAT_FIRST_MS = PB_LIMIT_FAULT_REPEAT_FIRST;
+static const uint32_t REPEAT_SLOWEST_MS = PB_LIMIT_FAULT_REPEAT_SLOWEST;
+static const uint64_t SPACING_US = 1000u * PB_LIMIT_FAULT_EVENT_SPACING;
+
+void pb_faults_announce(struct pb_module *module)
+{
+    for (unsigned i = 0; i <= module->config->faults; i++) {
+        struct pb_fault *fault = &module->faults.list[i];
+        if (!fault->latched)
+            continue;
+        fault->told = false;
+        fault->interval_ms = REPEAT_FIRST_MS;
+        fault->next_send_us = module->now_us;
+    }
+}
+
+bool pb_faults_confirm(struct pb_module *module, const struct pb_header *header, uint32_t event)
+{
+    for (unsigned i = 0; i <= module->config->faults; i++) {
+        struct pb_fault *fault = &module->faults.list[i];
+        if (!fault->used || fault->event != event || fault->told)
+            continue;
+        if (!pb_fault_is_latching(fault->code) || pb_lease_is_holder(module, header->source, header->session)) {
+            fault->told = true;
+            pb_faults_record_waiting(module);
+        } else {
+            fault->interval_ms = REPEAT_SLOWEST_MS;
+            fault->next_send_us = module->now_us + 1000u * (uint64_t)REPEAT_SLOWEST_MS;
+        }
+        return true;
+    }
+    return false;
+}
+
+/* When this occurrence wants to be told next, spacing apart. */
+static uint64_t wanted_us(const struct pb_fault *fault)
+{
+    if (!fault->used || fault->told)
+        return PB_NEVER;
+    if (!pb_fault_is_latching(fault->code) && fault->sendings >= PB_NOTICE_SENDINGS)
+        return PB_NEVER;
+    return fault->next_send_us;
+}
+
+uint64_t pb_faults_next_due(const struct pb_module *module)
+{
+    const struct pb_faults *faults = &module->faults;
+    uint64_t due_us = PB_NEVER;
+    for (unsigned i = 0; i <= module->config->faults; i++)
+        due_us = pb_earlier(due_us, wanted_us(&faults->list[i]));
+    if (due_us != PB_NEVER && faults->any_sent && due_us < faults->last_sent_us + SPACING_US)
+        due_us = faults->last_sent_us + SPACING_US;
+    return due_us;
+}
+
+void pb_faults_send_due(struct pb_module *module)
+{
+    struct pb_fault *first = NULL;
+    if (module->link_blocked || pb_faults_next_due(module) > module->now_us)
+        return;
+    for (unsigned i = 0; i <= module->config->faults; i++) {
+        struct pb_fault *fault = &module->faults.list[i];
+        if (wanted_us(fault) <= module->now_us && (first == NULL || fault->occurrence < first->occurrence))
+            first = fault;
+    }
+    if (first == NULL || !pb_encode_fault(module, first))
+        return;
+    module->faults.any_sent = true;
+    module->faults.last_sent_us = module->now_us;
+    first->next_send_us = module->now_us + 1000u * (uint64_t)first->interval_ms;
+    first->interval_ms = first->interval_ms < REPEAT_SLOWEST_MS / 2 ? 2 * first->interval_ms : REPEAT_SLOWEST_MS;
+    if (first->sendings < UINT8_MAX)
+        first->sendings++;
+    pb_faults_record_waiting(module);
+}
