@@ -371,7 +371,8 @@ def test_not_included(bench: Bench) -> None:
         for address in (bench.address + 1, 0, 0xFFFFFFFE):
             a.send("halt", to=address)
         a.silent("a halt for another address", "ADR-01")
-    bench.port.send(a.frame("halt")[:-1] + b"\x00")
+    damaged = a.frame("halt")
+    bench.port.send(damaged[:-1] + bytes([damaged[-1] ^ 1]))
     if a.status()["halt_count"] != count:
         raise Failed("a halt for somebody else, or a damaged one, was executed", clause="HLT-01")
 
