@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 import difflib
+import functools
 import re
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 
 from protobench.contract.kinds import Field, Shape
@@ -52,15 +53,24 @@ def explain(contract: Contract, name: str) -> tuple[Entry, ...]:
     """Return every meaning of a name: clause id, area, kind, field, refusal, drop reason, fault, limit, capability,
     item, input, enumeration. Raises UnknownName, a KeyError, that tells the names nearest to it.
     """
-    found = tuple(entry for section in _SECTIONS for entry in section(contract) if entry.name == name)
-    if found:
-        return found
-    raise UnknownName(name, difflib.get_close_matches(name, all_names(contract), n=3))
+    entries = _entries(contract)
+    if name in entries:
+        return entries[name]
+    raise UnknownName(name, difflib.get_close_matches(name, list(entries), n=3))
 
 
 def all_names(contract: Contract) -> list[str]:
     """Return every name that ``explain`` takes, once each, sorted."""
-    return sorted({entry.name for section in _SECTIONS for entry in section(contract)})
+    return sorted(_entries(contract))
+
+
+@functools.lru_cache(maxsize=4)
+def _entries(contract: Contract) -> Mapping[str, tuple[Entry, ...]]:
+    found: dict[str, tuple[Entry, ...]] = {}
+    for section in _SECTIONS:
+        for entry in section(contract):
+            found[entry.name] = (*found.get(entry.name, ()), entry)
+    return found
 
 
 # ---------------------------------------------------------------- sections

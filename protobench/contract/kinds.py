@@ -167,4 +167,4 @@ class KindsFile(Model):
 
     enum: dict[Name, Enumeration]
     record: dict[Name, Record]
-    kind: tuple[Kind, ...]
+    kind: tuple[Kind, ...] = pd.Field(min_length=1)

@@ -54,15 +54,19 @@ def spec_root() -> Path:
 
 
 def load_contract(version: str = "1.0", root: Path | None = None) -> Contract:
-    """Return a version of the contract; the same object each time it is asked for.
+    """Return a version of the contract. Raises ContractError with every problem found, each with file, path and rule.
 
-    ``root``: folder with a folder for each version, by default ``spec_root()``. Raises ContractError with
-    every problem found, each with file, path and rule. Files are read once; a changed file is not noticed.
+    ``root``: folder with a folder for each version. Without it the contract's own ``spec_root()`` is read, once,
+    and the same object is returned each time.
     """
-    return _load((root or spec_root()).resolve() / version)
+    return _load_own(version) if root is None else _load(root.resolve() / version)
 
 
-@functools.lru_cache(maxsize=16)
+@functools.cache
+def _load_own(version: str) -> Contract:
+    return _load(spec_root() / version)
+
+
 def _load(folder: Path) -> Contract:
     problems: list[Problem] = []
     read = {name: _read(folder, name, model, problems) for name, model in MODELS.items()}

@@ -109,8 +109,8 @@ class Refusal(Model):
 class ReasonsFile(Model):
     """``reasons.toml``."""
 
-    drop: tuple[Drop, ...]
-    refusal: tuple[Refusal, ...]
+    drop: tuple[Drop, ...] = pd.Field(min_length=1)
+    refusal: tuple[Refusal, ...] = pd.Field(min_length=1)
 
 
 class Fault(Model):

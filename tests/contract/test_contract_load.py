@@ -2,15 +2,18 @@
 
 from __future__ import annotations
 
+import shutil
+from pathlib import Path
+
 import pydantic as pd
 import pytest
 
-from protobench.contract import Contract, load_contract, spec_root
+from protobench.contract import Contract, load, load_contract, spec_root
 
 
 def test_the_contract_loads_once(contract: Contract) -> None:
     assert load_contract("1.0") is contract
-    assert load_contract("1.0", spec_root()) is contract
+    assert load_contract("1.0", spec_root()).kinds == contract.kinds
     assert (contract.name, contract.version) == ("Module Command Link", "1.0")
     assert repr(contract) == "<Module Command Link 1.0>"
 
@@ -101,6 +104,14 @@ def test_nothing_loaded_can_be_changed(contract: Contract) -> None:
         contract.limits["x"] = contract.limit("start_lead")  # type: ignore[index]
     with pytest.raises(TypeError):
         contract.enum_values("motion")["fly"] = 9  # type: ignore[index]
+
+
+def test_an_installed_package_has_its_own_copy(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    package = tmp_path / "site-packages" / "protobench"
+    shutil.copytree(spec_root(), package / "_spec")
+    monkeypatch.setattr(load, "_PACKAGE", package)
+    assert spec_root() == package / "_spec"
+    assert load_contract("1.0", spec_root()).version == "1.0"
 
 
 def test_a_missing_version_names_every_file() -> None:
