@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import pytest
-from conftest import Copy
+from contract_copy import Copy
 
 from protobench.contract.problems import Path
 

@@ -7,7 +7,7 @@ import subprocess
 import sys
 
 import pytest
-from conftest import Copy
+from contract_copy import Copy
 
 from protobench.contract import DECLARED, Contract, load_contract
 from protobench.contract.header import ANSWERS_BEYOND, LINE_LENGTH_MAX, generate_header

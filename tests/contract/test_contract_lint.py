@@ -6,7 +6,7 @@ from collections.abc import Callable
 
 import pytest
 import umsgpack
-from conftest import Copy
+from contract_copy import Copy
 from hypothesis import given
 from hypothesis import strategies as st
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 
 import pytest
-from conftest import Copy
+from contract_copy import Copy
 
 from protobench.contract import Contract
 from protobench.contract.versions import compare
