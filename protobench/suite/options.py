@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Protocol
 
 from protobench.judge import CaseRecord
 from protobench.links import Link
+from protobench.suite.statement import Statement
 
 LinkOpener = Callable[[], Link]
 
@@ -20,6 +21,7 @@ class RunOptions:
     ``link``: link address as text, or None for the embedded emulated module in virtual time.
     ``address``: the module's unicast address, or None to find it by a probe.
     ``only``: a pytest ``-k``-like expression over case ids and areas, or None for all.
+    ``statement``: what the supplier says the module has; a module that describes itself otherwise is not judged.
     ``level``: ``required`` or ``recommended`` (which includes the required ones).
     ``attended``: someone stands by, so what can move hardware may be sent.
     ``opener``: opens the link instead of ``link``; the text then only names it.
@@ -27,7 +29,7 @@ class RunOptions:
 
     link: str | None = None
     address: int | None = None
-    ics: Path | None = None
+    statement: Statement | None = None
     only: str | None = None
     level: str = "required"
     seed: int = 1
@@ -35,7 +37,6 @@ class RunOptions:
     attended: bool = False
     virtual: bool | None = None
     opener: LinkOpener | None = None
-    cases: tuple[str, ...] = field(default_factory=tuple)
 
 
 class Observer(Protocol):

@@ -12,9 +12,9 @@ from protobench.suite.case import LEVELS, CaseInfo, registered
 from protobench.suite.options import Observer, RunOptions
 from protobench.suite.port import Log
 from protobench.suite.selection import select
-from protobench.suite.session import NeedsAttendance, Session
+from protobench.suite.session import NeedsAttendance, Session, StatementDiffers
 
-__all__ = ["NeedsAttendance", "list_cases", "run_suite"]
+__all__ = ["NeedsAttendance", "StatementDiffers", "list_cases", "run_suite"]
 
 
 def list_cases(level: str = "recommended", only: str | None = None) -> list[CaseInfo]:
@@ -35,7 +35,7 @@ def list_cases(level: str = "recommended", only: str | None = None) -> list[Case
 def run_suite(options: RunOptions, observer: Observer | None = None, log: Log | None = None) -> RunRecord:
     """Judge a module by the selected cases.
 
-    Raises NeedsAttendance, NoModule, LinkError, ContractError before the first case. A run that cannot go on
+    Raises NeedsAttendance, StatementDiffers, NoModule, LinkError, ContractError before the first case. A run that cannot go on
     keeps what it has and says why in ``stopped``; so does one that is interrupted, before KeyboardInterrupt
     goes on.
     """

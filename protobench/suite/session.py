@@ -32,6 +32,10 @@ class NeedsAttendance(Exception):  # noqa: N818 - says what is missing
     """The module may move matter, and nobody said that someone stands by. The message says why and how."""
 
 
+class StatementDiffers(Exception):  # noqa: N818 - says what differs
+    """The module describes itself otherwise than its conformance statement says; the message says where."""
+
+
 class Session:
     """Judges cases against one module. Use as a context manager; ``log`` takes every frame."""
 
@@ -63,6 +67,7 @@ class Session:
                 )
             bench = Bench(link, self.contract, self.codec, self.options.seed, self._log)
             bench.discover(self.options.address)
+            self._compare_statement(bench)
             if not bench.facts.emulated and not self.options.attended:
                 raise NeedsAttendance(
                     f"module {bench.address} on {link.name} describes itself as physical. Nothing that can move it "
@@ -72,6 +77,15 @@ class Session:
             link.close()
             raise
         return bench
+
+    def _compare_statement(self, bench: Bench) -> None:
+        if self.options.statement is None:
+            return
+        differences = self.options.statement.differences(self.contract, bench.facts.description)
+        if differences:
+            raise StatementDiffers(
+                f"module {bench.address} contradicts its statement: {'; '.join(differences)}"
+            )
 
     def _open_link(self) -> Link:
         if self.options.opener is not None:

@@ -6,7 +6,7 @@ import random
 
 from emulator.config import ModuleConfig
 from emulator.engine import ModuleEngine
-from emulator.storage import MemoryStorage
+from emulator.storage import Storage
 
 from protobench.contract import load_contract
 from protobench.links import MemoryLink
@@ -14,5 +14,5 @@ from protobench.links import MemoryLink
 
 def embedded_link(seed: int) -> MemoryLink:
     """A link to a new emulated module with the default configuration and address 1."""
-    engine = ModuleEngine(ModuleConfig(), MemoryStorage(), random.Random(seed), load_contract())
+    engine = ModuleEngine(ModuleConfig(), Storage(), random.Random(seed), load_contract())
     return MemoryLink(engine, name="embedded emulated module")

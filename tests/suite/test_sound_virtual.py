@@ -7,7 +7,7 @@ import random
 import pytest
 from emulator.config import ModuleConfig
 from emulator.engine import ModuleEngine
-from emulator.storage import MemoryStorage
+from emulator.storage import Storage
 from judging import expect_sound, firmware, judge
 
 from protobench.contract import load_contract
@@ -32,7 +32,7 @@ def test_embedded_module() -> None:
 def test_python_module(profile: str, seed: int) -> None:
     def opener() -> MemoryLink:
         config = PROFILES[profile]()
-        return MemoryLink(ModuleEngine(config, MemoryStorage(), random.Random(seed), load_contract()))
+        return MemoryLink(ModuleEngine(config, Storage(), random.Random(seed), load_contract()))
 
     expect_sound(judge(opener=opener))
 

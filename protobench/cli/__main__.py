@@ -1,0 +1,5 @@
+"""``python -m protobench.cli`` is ``protobench``."""
+
+from protobench.cli import main
+
+main()

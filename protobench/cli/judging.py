@@ -1,0 +1,135 @@
+"""What ``protobench check`` does once its options are read."""
+
+from __future__ import annotations
+
+import json
+from contextlib import ExitStack
+from pathlib import Path
+from typing import Any
+
+import typer
+from rich.console import Console
+
+from protobench.cli import check
+from protobench.cli.cautions import CAUTIONS
+from protobench.cli.progress import RunProgress
+from protobench.cli.summary import print_summary
+from protobench.contract import load_contract
+from protobench.evidence import ConformanceLog, build_report, junit_xml
+from protobench.judge import Failed, RunRecord
+from protobench.links import BadAddress, LinkError, NoVirtualTime
+from protobench.suite import run
+from protobench.suite.bench import NoModule
+from protobench.suite.options import RunOptions
+from protobench.suite.statement import StatementError, load_statement
+
+
+def check_expression(level: str, only: str | None) -> None:
+    """Refuse an expression that cannot be read, or that selects nothing."""
+    try:
+        found = run.list_cases(level, only)
+    except ValueError as error:
+        raise typer.BadParameter(str(error), param_hint="--only") from None
+    if not found:
+        raise typer.BadParameter(f"{only!r} selects no case; see --list", param_hint="--only")
+
+
+def list_cases(level: str, only: str | None, *, as_json: bool) -> None:
+    """Print the cases, one a line, or as JSON."""
+    cases = run.list_cases(level, only)
+    if as_json:
+        rows = [
+            {
+                "id": info.id,
+                "level": info.level,
+                "class": info.case_class,
+                "purpose": info.purpose,
+                "clauses": list(info.clauses),
+                "needs": info.needs,
+            }
+            for info in cases
+        ]
+        typer.echo(json.dumps(rows, indent=2))
+        return
+    width = max(len(info.id) for info in cases)
+    for info in cases:
+        needs = f" [{info.needs}]" if info.needs else ""
+        typer.echo(f"{info.id:<{width}}  {info.level:<11} {info.case_class:<11} {info.purpose}{needs}")
+
+
+def make_options(*, ics: Path | None, virtual: bool, **options: Any) -> RunOptions:
+    """Options of the run; a statement that cannot be used ends the command."""
+    try:
+        statement = load_statement(ics, load_contract()) if ics is not None else None
+    except StatementError as error:
+        raise typer.BadParameter(str(error), param_hint="--ics") from None
+    return RunOptions(statement=statement, virtual=virtual or None, **options)
+
+
+def judge(options: RunOptions, stack: ExitStack, console: Console) -> RunRecord:
+    """Run the suite; what keeps it from beginning ends the command with a message and the right status."""
+    if options.attended:
+        console.print(CAUTIONS, highlight=False)
+    log = _open_log(options, stack)
+    progress = stack.enter_context(RunProgress(console, log))
+    try:
+        return run.run_suite(options, progress, log)
+    except (run.NeedsAttendance, BadAddress, NoVirtualTime) as error:
+        message, status = str(error), check.WRONG_USE
+    except (run.StatementDiffers, Failed) as error:
+        message, status = str(error), check.FAILED
+    except (NoModule, LinkError) as error:
+        message, status = str(error), check.BENCH_FAILED
+    stack.close()
+    console.print(message, highlight=False, soft_wrap=True, markup=False)
+    raise typer.Exit(status)
+
+
+def _open_log(options: RunOptions, stack: ExitStack) -> ConformanceLog | None:
+    if options.out is None:
+        return None
+    try:
+        options.out.mkdir(parents=True, exist_ok=True)
+        stream = stack.enter_context((options.out / "conformance.log").open("w", encoding="utf-8"))
+    except OSError as error:
+        raise typer.BadParameter(f"{options.out}: {error.strerror}", param_hint="--out") from None
+    log = ConformanceLog(stream)
+    contract = load_contract()
+    log.header(
+        contract=f"{contract.name} {contract.version}", seed=options.seed, link=options.link or "embedded"
+    )
+    log.header(
+        times="seconds from the first frame; in real time of this machine's monotonic clock, as taken by the bench"
+    )
+    return log
+
+
+def write_report(record: RunRecord, out: Path | None) -> dict[str, Any]:
+    """Make the report and, with a folder, write it and the JUnit file."""
+    report = build_report(record, load_contract())
+    if out is not None:
+        (out / "report.json").write_text(json.dumps(report, indent=2) + "\n", encoding="utf-8")
+        (out / "junit.xml").write_bytes(junit_xml(record))
+    return report
+
+
+def summarize(record: RunRecord, out: Path | None) -> None:
+    """Print the run in words to standard output."""
+    console = Console()
+    print_summary(console, record, load_contract())
+    if out is not None:
+        console.print(
+            f"report: {out}/report.json, {out}/junit.xml, {out}/conformance.log",
+            highlight=False,
+            soft_wrap=True,
+        )
+
+
+def exit_status(record: RunRecord) -> int:
+    """0 to 4, as ``protobench check --help`` says."""
+    if record.count("fail"):
+        return check.FAILED
+    judged = record.count("pass") + record.count("inconc")
+    if record.count("error") or record.stopped or not judged:
+        return check.BENCH_FAILED
+    return check.INCONCLUSIVE if record.count("inconc") else check.PASSED

@@ -1,0 +1,56 @@
+"""The run as JUnit XML, in the shape that pytest writes; there is no standard behind the name.
+
+``inconc`` and what does not apply are ``skipped`` with a type that says which, since the format has no word for either;
+``error`` is the bench's own.
+"""
+
+from __future__ import annotations
+
+import xml.etree.ElementTree as ET
+
+from protobench.judge import CaseRecord, RunRecord
+
+_ELEMENTS = {"fail": "failure", "error": "error", "inconc": "skipped", "not_applicable": "skipped"}
+
+
+def junit_xml(record: RunRecord) -> bytes:
+    """The document, UTF-8 with a declaration."""
+    skipped = record.count("inconc") + record.count("not_applicable")
+    counts = {
+        "tests": str(len(record.cases)),
+        "failures": str(record.count("fail")),
+        "errors": str(record.count("error")),
+        "skipped": str(skipped),
+        "time": f"{sum(case.duration_s for case in record.cases):.3f}",
+    }
+    root = ET.Element("testsuites", {"name": "protobench"})
+    suite = ET.SubElement(root, "testsuite", {"name": f"protobench {record.contract}", **counts})
+    properties = ET.SubElement(suite, "properties")
+    for name, value in {"seed": record.seed, **record.environment}.items():
+        ET.SubElement(properties, "property", {"name": name, "value": str(value)})
+    for case in record.cases:
+        _add_case(suite, case)
+    ET.indent(root)
+    document: bytes = ET.tostring(root, encoding="utf-8", xml_declaration=True)
+    return document
+
+
+def _add_case(suite: ET.Element, case: CaseRecord) -> None:
+    attributes = {"classname": case.id.partition(".")[0], "name": case.id, "time": f"{case.duration_s:.3f}"}
+    element = ET.SubElement(suite, "testcase", attributes)
+    properties = ET.SubElement(element, "properties")
+    for name, value in (
+        ("verdict", case.verdict),
+        ("level", case.level),
+        ("clauses", " ".join(case.clauses)),
+    ):
+        ET.SubElement(properties, "property", {"name": name, "value": value})
+    tag = _ELEMENTS.get(case.verdict)
+    if tag is not None:
+        outcome = ET.SubElement(element, tag, {"type": case.verdict, "message": _clean(case.reason)})
+        outcome.text = _clean("\n".join(text for text in (case.detail, case.replay) if text))
+
+
+def _clean(text: str) -> str:
+    """Without the control characters that XML 1.0 cannot hold."""
+    return "".join(character if character in "\n\t" or character >= " " else "?" for character in text)

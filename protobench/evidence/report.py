@@ -1,0 +1,64 @@
+"""The report of a run as JSON values: what was judged, by which cases, and what that says of each clause."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from protobench.contract import Contract
+from protobench.judge import NOT_APPLICABLE, CaseRecord, RunRecord, Verdict
+
+SUMMARY = ("pass", "fail", "inconc", "error", NOT_APPLICABLE)
+
+
+def build_report(record: RunRecord, contract: Contract) -> dict[str, Any]:
+    """The report: contract, seed, iut, environment, summary, cases, clauses.
+
+    A clause's verdict is the worst of the applicable cases that cover it, ``none`` when no case judged it.
+    """
+    return {
+        "contract": record.contract,
+        "seed": record.seed,
+        "iut": record.iut,
+        "environment": record.environment,
+        "summary": {word: record.count(word) for word in SUMMARY},
+        "stopped": record.stopped,
+        "cases": [_case(case) for case in record.cases],
+        "clauses": _clauses(record, contract),
+    }
+
+
+def _case(case: CaseRecord) -> dict[str, Any]:
+    entry: dict[str, Any] = {
+        "id": case.id,
+        "level": case.level,
+        "class": case.case_class,
+        "purpose": case.purpose,
+        "clauses": list(case.clauses),
+        "verdict": case.verdict,
+        "reason": case.reason,
+        "duration_s": case.duration_s,
+    }
+    if case.replay:
+        entry |= {"detail": case.detail.splitlines(), "replay": case.replay}
+    return entry
+
+
+def _clauses(record: RunRecord, contract: Contract) -> list[dict[str, Any]]:
+    covering: dict[str, list[CaseRecord]] = {}
+    for case in record.cases:
+        for clause_id in case.clauses:
+            covering.setdefault(clause_id, []).append(case)
+    entries = []
+    for clause in contract.clauses:
+        cases = covering.get(clause.id, [])
+        judged = [Verdict[case.verdict.upper()] for case in cases if case.verdict != NOT_APPLICABLE]
+        worst = max(judged, default=Verdict.NONE)
+        entries.append(
+            {
+                "id": clause.id,
+                "level": clause.level,
+                "verdict": worst.word,
+                "cases": [case.id for case in cases],
+            }
+        )
+    return entries
