@@ -74,7 +74,7 @@ def _default_faces() -> tuple[FaceConfig, ...]:
 
 
 class ModuleConfig(BaseModel):
-    """One module. Times ending in ``_us`` or ``_ms`` without ``declared`` are what it takes; ``declared_`` what it says."""
+    """One module. Times with ``declared_`` in front are what it says, the others what it takes."""
 
     model_config = ConfigDict(extra="forbid", frozen=True)
     address: int = Field(1, ge=0, le=0xEFFFFFFF)
@@ -148,14 +148,19 @@ class ModuleConfig(BaseModel):
         """Slow in everything, and still within every limit."""
         motions = {
             name: motion.model_copy(
-                update={"typical_ms": 6 * motion.typical_ms, "longest_ms": 6 * motion.longest_ms, "no_return_ms": 6 * motion.no_return_ms}
+                update={field: 6 * getattr(motion, field) for field in ("typical_ms", "longest_ms", "no_return_ms")}
             )
             for name, motion in _default_motions().items()
         }  # fmt: skip
         return cls(
-            motions=motions, receipt_delay_us=40_000, declared_receipt_ms=50, starting_ms=800, declared_starting_ms=1000,
-            stop_ms=300, declared_stop_ms=400,
-        )  # fmt: skip
+            motions=motions,
+            receipt_delay_us=40_000,
+            declared_receipt_ms=50,
+            starting_ms=800,
+            declared_starting_ms=1000,
+            stop_ms=300,
+            declared_stop_ms=400,
+        )
 
     @classmethod
     def holding(cls) -> ModuleConfig:

@@ -125,9 +125,7 @@ class ModuleEngine:
     def take_output(self) -> list[bytes]:
         """Stuffed frames, each ended by a delimiter, written since the last call."""
         frames, self._output = self._output, []
-        blocks = []
-        for frame in frames:
-            blocks.append(stuff(frame) + b"\0")
+        blocks = [stuff(frame) + b"\0" for frame in frames]
         if blocks and (self._last_sent_us is None or self.now_us - self._last_sent_us > 200_000):
             blocks.insert(0, b"\0")
         if blocks:
@@ -181,9 +179,9 @@ class ModuleEngine:
             self._end_phase(run)
         for motion in [one for one in self.motions.scheduled if (one.start_us or 0) <= now_us]:
             self._begin_scheduled(motion)
-        motion = self._ready_motion()
-        if motion is not None:
-            self._get_ready(motion)
+        ready = self._ready_motion()
+        if ready is not None:
+            self._get_ready(ready)
 
     def _after_input(self) -> None:
         """An input is taken: number the change, then send what is due."""
@@ -392,7 +390,7 @@ class ModuleEngine:
     def _take_request(self, frame: Frame) -> None:
         many = self.contract.is_multicast(frame.destination)
         kind = self._kind_of(frame) if frame.version == self.contract.major else None
-        if many and self._lacks_room_for_many(frame, kind) or not many and not self.outbox.has_room:
+        if (many and self._lacks_room_for_many(frame, kind)) or (not many and not self.outbox.has_room):
             self._drop("no-room")
             return
         if frame.version != self.contract.major:

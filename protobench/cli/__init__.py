@@ -36,9 +36,9 @@ def _show_version(wanted: bool) -> None:
 @app.callback()
 def _common(
     log_level: str = typer.Option("warning", help="What is logged: debug, info, warning or error."),
-    version: bool = typer.Option(
+    version: bool = typer.Option(  # noqa: ARG001 - its callback does it
         False, "--version", callback=_show_version, is_eager=True, help="Say which this is."
-    ),  # noqa: ARG001
+    ),
 ) -> None:
     level = logging.getLevelNamesMapping().get(log_level.upper())
     if level is None:

@@ -19,7 +19,8 @@ def check(
         str | None,
         typer.Option(
             help="Link to the module: run:COMMAND, lockstep:COMMAND, tcp://HOST:PORT, udp://HOST:PORT, serial:DEVICE, "
-            "zmq+tcp://HOST:PORT, zmq+ipc://PATH. Without it an emulated module in this process is judged, in virtual time."
+            "zmq+tcp://HOST:PORT, zmq+ipc://PATH. Without it an emulated module in this process is judged, in "
+            "virtual time."
         ),
     ] = None,
     address: Annotated[
@@ -68,8 +69,16 @@ def check(
         judging.list_cases(level, only, as_json=as_json)
         return
     options = judging.make_options(
-        link=link, address=address, ics=ics, only=only, level=level, seed=seed, out=out, attended=attended, virtual=virtual
-    )  # fmt: skip
+        ics=ics,
+        virtual=virtual,
+        link=link,
+        address=address,
+        only=only,
+        level=level,
+        seed=seed,
+        out=out,
+        attended=attended,
+    )
     with ExitStack() as stack:
         record = judging.judge(options, stack, Console(stderr=True))
     report = judging.write_report(record, out)

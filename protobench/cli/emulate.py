@@ -18,7 +18,8 @@ def emulate(
 ) -> None:
     """Serve emulated modules in real time until interrupted.
 
-    Example: protobench emulate --modules 3, and in another terminal: protobench check --link zmq+tcp://127.0.0.1:5570 --address 1
+    Example: protobench emulate --modules 3, and in another terminal:
+    protobench check --link zmq+tcp://127.0.0.1:5570 --address 1
     """
     from emulator.serve import ServeError, serve  # noqa: PLC0415 - slow to import: not for --help
 

@@ -8,8 +8,9 @@ from typing import TextIO
 class ConformanceLog:
     """Writes one line a frame to ``stream``.
 
-    A line is: time in seconds since the first entry with microseconds, direction (``->`` to the module, ``<-`` from it),
-    meaning, and the bytes in hex after a bar. Lines that begin with ``#`` say what belongs to the run and its cases.
+    A line is: time in seconds since the first entry with microseconds, direction (``->`` to the module, ``<-`` from
+    it), meaning, and the bytes in hex after a bar. Lines that begin with ``#`` say what belongs to the run and its
+    cases.
     """
 
     def __init__(self, stream: TextIO) -> None:

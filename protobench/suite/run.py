@@ -35,9 +35,8 @@ def list_cases(level: str = "recommended", only: str | None = None) -> list[Case
 def run_suite(options: RunOptions, observer: Observer | None = None, log: Log | None = None) -> RunRecord:
     """Judge a module by the selected cases.
 
-    Raises NeedsAttendance, StatementDiffers, NoModule, LinkError, ContractError before the first case. A run that cannot go on
-    keeps what it has and says why in ``stopped``; so does one that is interrupted, before KeyboardInterrupt
-    goes on.
+    Raises NeedsAttendance, StatementDiffers, NoModule, LinkError, ContractError before the first case. A run that
+    cannot go on keeps what it has and says why in ``stopped``. When it is interrupted the module is sent a halt.
     """
     selected = list_cases(options.level, options.only)
     with Session(options, log) as session:

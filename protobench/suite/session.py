@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import platform
 import shlex
 import time
@@ -26,6 +27,7 @@ from protobench.suite.targets import embedded_link
 from protobench.wire import Codec, load_codec
 
 DETAIL_LINES = 120
+HALT_SETTLE_NS = 100_000_000
 
 
 class NeedsAttendance(Exception):  # noqa: N818 - says what is missing
@@ -49,8 +51,16 @@ class Session:
     def __enter__(self) -> Session:
         return self
 
-    def __exit__(self, *exception: object) -> None:
+    def __exit__(self, kind: type[BaseException] | None, *rest: object) -> None:
+        if kind is not None:
+            self._halt()
         self.close()
+
+    def _halt(self) -> None:
+        """Whatever broke the run off, the module does not go on moving for it."""
+        with contextlib.suppress(LinkError):
+            self.bench.a.send("halt")
+            self.bench.port.link.settle(self.bench.port.now_ns + HALT_SETTLE_NS)
 
     def close(self) -> None:
         self.bench.port.link.close()

@@ -7,7 +7,6 @@ import random
 from emulator.config import ModuleConfig
 from emulator.engine import ModuleEngine
 from emulator.storage import Storage
-
 from protobench.contract import load_contract
 from protobench.links import MemoryLink
 
