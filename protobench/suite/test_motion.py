@@ -430,7 +430,7 @@ def test_start_at(bench: Bench) -> None:
     a = bench.a
     a.make_ready()
     facts = bench.facts.travel()
-    for lead_ms in (60, 250):
+    for lead_ms in (60 + 3 * bench.facts.receipt_ms, 250):
         start, exchange = _clock_in(a, lead_ms)
         move = a.move(facts.name, start_at=start)
         if a.status()["scheduled"] != 1:

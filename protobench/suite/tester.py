@@ -293,7 +293,10 @@ class Tester:
         """Wait until the module has started again; every tester of the case learns the new epoch."""
         self.port.watch.restarted()
         limit_ms = self.bench.facts.starting_ms + PATIENCE_MS + self.port.u_ms
-        started = self.port.wait_for(lambda received: received.kind == "started", limit_ms)
+        before = self.epoch
+        started = self.port.wait_for(
+            lambda received: received.kind == "started" and received["epoch"] != before, limit_ms
+        )
         if started is None:
             raise Failed(f"no started event within {limit_ms:.0f} ms of a restart", clause="STA-08")
         description = self.read("describe")

@@ -62,12 +62,11 @@ class Watch:
         self._asked: dict[Key, _Asked] = {}
         self._outcomes: dict[tuple[Key, int], bytes] = {}
         self._status: dict[tuple[int, int], dict[str, Any]] = {}
-        self._last_fault_ns: int | None = None
+        self._last_faults: dict[int, int] = {}
 
     def restarted(self) -> None:
         """The module was made to restart: its counts begin anew."""
         self._status.clear()
-        self._last_fault_ns = None
 
     def forget_reports(self) -> None:
         """The change number was preset: earlier reports say nothing about later ones."""
@@ -162,7 +161,10 @@ class Watch:
             self._violate("ACK-07", f"a second, different outcome of one motion: {reading.words}")
 
     def _fault(self, data: bytes, frame: Frame, reading: Reading, time_ns: int) -> None:  # noqa: ARG002
-        last, self._last_fault_ns = self._last_fault_ns, time_ns
+        assert reading.fields is not None
+        epoch = reading.fields["epoch"]
+        last = self._last_faults.get(epoch)
+        self._last_faults = {epoch: time_ns}
         if last is not None and time_ns - last < self._spacing_ns - self.spacing_slack_ns:
             self._violate("FLT-06", f"two fault events {(time_ns - last) / 1e6:.3f} ms apart")
 

@@ -5,11 +5,11 @@ from __future__ import annotations
 import random
 
 import pytest
+from judging import expect_sound, firmware, judge
+
 from emulator.config import ModuleConfig
 from emulator.engine import ModuleEngine
 from emulator.storage import Storage
-from judging import expect_sound, firmware, judge
-
 from protobench.contract import load_contract
 from protobench.links import MemoryLink
 
