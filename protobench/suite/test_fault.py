@@ -283,6 +283,47 @@ def test_clear(bench: Bench) -> None:
 
 
 @case(
+    "FLT.cleared-not-told",
+    "valid",
+    "A cleared fault that nobody confirmed is told no more.",
+    clauses=["FLT-04", "FLT-08"],
+    needs="assist",
+)
+def test_cleared_not_told(bench: Bench) -> None:
+    a = bench.a
+    a.take_lease()
+    code = _code(bench, "winding-hot")
+    a.assist("raise", code=code)
+    _next(a, code)
+    a.assist("withdraw", code=code)
+    a.accepted("clear-faults", occurrences=_latched(bench, a), clause="FLT-08")
+    if a.next_fault(code, FIRST_REPEAT_MS + 200) is not None:
+        raise Failed("a cleared fault was told again", clause="FLT-04")
+
+
+@case(
+    "FLT.first-before-repeats",
+    "valid",
+    "A new fault is told before the repeats of older ones.",
+    clauses=["FLT-06", "FLT-01"],
+    needs="assist",
+)
+def test_first_before_repeats(bench: Bench) -> None:
+    a = bench.a
+    a.take_lease()
+    old = [_code(bench, name) for name in ("winding-hot", "over-current", "position-lost", "bond-lost")]
+    for code in old:
+        a.assist("raise", code=code)
+        _next(a, code, 2 * SPACING_MS)
+    bench.port.wait_ms(FIRST_REPEAT_MS - SPACING_MS)
+    new = _code(bench, "supply-low")
+    sent = a.assist("raise", code=new)
+    event = _next(a, new, 3 * SPACING_MS, "FLT-06")
+    if (event.time_ns - sent.time_ns) / 1e6 > SPACING_MS + bench.facts.receipt_ms + 3 * bench.port.u_ms + 1:
+        raise Failed("a new fault waited behind repeats of older ones", clause="FLT-06")
+
+
+@case(
     "FLT.clear-refused",
     "inopportune",
     "Clearing is refused while the cause stands, and for what is not latched; then all or nothing.",

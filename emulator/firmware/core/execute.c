@@ -57,8 +57,10 @@ static void clear_faults(struct pb_module *module, const struct pb_request *requ
     const struct pb_value list = pb_body_value(&request->body, PB_KEY_CLEAR_FAULTS_OCCURRENCES, &contents);
     for (unsigned i = 0; i < list.size; i++) {
         struct pb_fault *fault = pb_faults_latched(module, pb_body_item(&request->body, &contents).integer);
-        if (fault != NULL) /* null: named twice */
-            fault->latched = false;
+        if (fault == NULL)
+            continue; /* named twice */
+        fault->latched = false;
+        fault->told = true; /* who clears it knows of it */
     }
     pb_faults_after_clear(module);
 }

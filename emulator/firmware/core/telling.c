@@ -13,6 +13,7 @@ void pb_faults_announce(struct pb_module *module)
         if (!fault->latched)
             continue;
         fault->told = false;
+        fault->sendings = 0;
         fault->interval_ms = REPEAT_FIRST_MS;
         fault->next_send_us = module->now_us;
     }
@@ -57,6 +58,15 @@ uint64_t pb_faults_next_due(const struct pb_module *module)
     return due_us;
 }
 
+/* First tellings go before repeats, each in order of occurrence. */
+static bool goes_before(const struct pb_fault *fault, const struct pb_fault *other)
+{
+    const bool is_first = fault->sendings == 0;
+    if (is_first != (other->sendings == 0))
+        return is_first;
+    return fault->occurrence < other->occurrence;
+}
+
 void pb_faults_send_due(struct pb_module *module)
 {
     struct pb_fault *first = NULL;
@@ -64,7 +74,7 @@ void pb_faults_send_due(struct pb_module *module)
         return;
     for (unsigned i = 0; i <= module->config->faults; i++) {
         struct pb_fault *fault = &module->faults.list[i];
-        if (wanted_us(fault) <= module->now_us && (first == NULL || fault->occurrence < first->occurrence))
+        if (wanted_us(fault) <= module->now_us && (first == NULL || goes_before(fault, first)))
             first = fault;
     }
     if (first == NULL || !pb_encode_fault(module, first))
