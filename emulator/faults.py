@@ -120,9 +120,9 @@ class FaultList:
         return False
 
     def _must_stay(self, entry: Occurrence) -> bool:
-        if entry.latched or entry.code in self.standing:
-            return True
-        return not entry.latching and not entry.told and entry.sendings < self.times.notice_sendings
+        if entry.latching:
+            return entry.latched
+        return entry.code in self.standing or (not entry.told and entry.sendings < self.times.notice_sendings)
 
     def clear(self, entry: Occurrence) -> None:
         """Clear one occurrence: nobody is told of it any more."""

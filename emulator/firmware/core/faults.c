@@ -76,9 +76,11 @@ static bool must_stay(const struct pb_module *module, const struct pb_fault *fau
 {
     if (!fault->used)
         return false;
-    if (fault->latched || pb_faults_is_standing(module, fault->code))
+    if (pb_fault_is_latching(fault->code))
+        return fault->latched;
+    if (pb_faults_is_standing(module, fault->code))
         return true;
-    return !pb_fault_is_latching(fault->code) && !fault->told && fault->sendings < PB_NOTICE_SENDINGS;
+    return !fault->told && fault->sendings < PB_NOTICE_SENDINGS;
 }
 
 static struct pb_fault *find_place(struct pb_module *module, uint8_t code)
