@@ -68,13 +68,14 @@ class Session:
     # ------------------------------------------------------------ opening
 
     def _open(self) -> Bench:
+        if (self.options.link or "").startswith(
+            "serial:"
+        ):  # opening one may already restart what is behind it
+            self._need_attendance(self.options.link)
         link = self._open_link()
         try:
-            if not link.loopback and not self.options.attended:
-                raise NeedsAttendance(
-                    f"{link.name} is a serial device or another host: what is behind it may move. "
-                    "Nothing was sent. Give --attended when someone stands by with an independent power cut."
-                )
+            if not link.loopback:
+                self._need_attendance(link.name)
             bench = Bench(link, self.contract, self.codec, self.options.seed, self._log)
             bench.discover(self.options.address)
             self._compare_statement(bench)
@@ -87,6 +88,13 @@ class Session:
             link.close()
             raise
         return bench
+
+    def _need_attendance(self, name: str | None) -> None:
+        if not self.options.attended:
+            raise NeedsAttendance(
+                f"{name} is a serial device or another host: what is behind it may move. "
+                "Nothing was sent. Give --attended when someone stands by with an independent power cut."
+            )
 
     def _compare_statement(self, bench: Bench) -> None:
         if self.options.statement is None:

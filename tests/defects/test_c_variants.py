@@ -11,6 +11,7 @@ from pathlib import Path
 from typing import NamedTuple
 
 import pytest
+
 from protobench.contract import load_contract
 from protobench.suite.options import RunOptions
 from protobench.suite.run import list_cases, run_suite
