@@ -11,6 +11,7 @@ import typer
 
 if TYPE_CHECKING:
     from protobench.contract import Contract
+    from protobench.contract.document import Encode
 
 app = typer.Typer(help="Read, check and convert the contract.", no_args_is_help=True)
 Version = Annotated[str, typer.Option("--contract-version", help="Version of the contract.")]
@@ -34,7 +35,7 @@ def show(version: Version = VERSION) -> None:
 
     Example: protobench contract show | less
     """
-    typer.echo(_document(_load(version)), nl=False)
+    typer.echo(readable(_load(version)), nl=False)
 
 
 @app.command()
@@ -48,7 +49,7 @@ def document(
     from protobench.contract import spec_root  # noqa: PLC0415
 
     path = spec_root() / version / "contract.md"
-    wanted = _document(_load(version))
+    wanted = readable(_load(version))
     found = path.read_text(encoding="utf-8") if path.exists() else ""
     if not check:
         path.write_text(wanted, encoding="utf-8")
@@ -63,8 +64,8 @@ def document(
         raise typer.Exit(NOT_FOUND)
 
 
-def _document(contract: Contract) -> str:
-    from protobench.contract.document import generate_document  # noqa: PLC0415
+def encoder(contract: Contract) -> Encode:
+    """What makes the frames of the worked exchanges."""
     from protobench.wire import load_codec  # noqa: PLC0415
 
     codec = load_codec(contract)
@@ -75,7 +76,14 @@ def _document(contract: Contract) -> str:
         message = codec.new(kind, **{_attribute(name): value for name, value in fields.items()})
         return message.to_frame(source, destination, session, number)
 
-    return generate_document(contract, encode)
+    return encode
+
+
+def readable(contract: Contract) -> str:
+    """The readable contract, as Markdown."""
+    from protobench.contract.document import generate_document  # noqa: PLC0415
+
+    return generate_document(contract, encoder(contract))
 
 
 def _attribute(name: str) -> str:

@@ -7,11 +7,9 @@ logical line is longer than the 4095 characters that every C99 compiler must tak
 from __future__ import annotations
 
 import re
-import sys
 from collections.abc import Callable, Iterable, Iterator
 
 from protobench.contract.kinds import Field, Kind
-from protobench.contract.load import load_contract
 from protobench.contract.model import Contract
 from protobench.contract.states import DECLARED, State
 
@@ -199,7 +197,9 @@ def _field_row(contract: Contract, kind: Kind, field: Field) -> tuple[str | int,
         numbers = sorted(contract.enum_values(field.enum).values())
         low, high = numbers[0], numbers[-1]
         if len(numbers) != high - low + 1:
-            raise ValueError(f"{kind.name}.{field.name}: the numbers of {field.enum} have a gap; a range cannot tell")
+            raise ValueError(
+                f"{kind.name}.{field.name}: the numbers of {field.enum} have a gap; a range cannot tell"
+            )
     if field.size is not None:
         items_min = items_max = field.size
     if field.size_max is not None:
@@ -314,8 +314,6 @@ def _check(text: str) -> None:
         seen.add(name)
     for line in text.replace("\\\n", "").splitlines():
         if len(line) > LINE_LENGTH_MAX:
-            raise ValueError(f"{line[:60]}...: longer than the {LINE_LENGTH_MAX} characters a C99 compiler must take")
-
-
-if __name__ == "__main__":
-    sys.stdout.write(generate_header(load_contract()))
+            raise ValueError(
+                f"{line[:60]}...: longer than the {LINE_LENGTH_MAX} characters a C99 compiler must take"
+            )

@@ -2,24 +2,24 @@
 
 from __future__ import annotations
 
-import make_document
 import pytest
 
-from protobench.contract import Contract
+from protobench.cli.contract import encoder, readable
+from protobench.contract import Contract, load_contract, spec_root
 from protobench.contract.diagram import byte_chart, state_diagram
 from protobench.contract.document import frame_of
 from protobench.wire import Frame, load_codec
 
-DOCUMENT = make_document.document()
+DOCUMENT = readable(load_contract())
 
 
 def test_the_committed_document_is_not_stale() -> None:
-    hint = "run: python tests/contract/make_document.py"
-    assert make_document.PATH.read_text(encoding="utf-8") == DOCUMENT, hint
+    path = spec_root() / "1.0" / "contract.md"
+    assert path.read_text(encoding="utf-8") == DOCUMENT, "run: protobench contract document"
 
 
 def test_the_document_is_the_same_each_time() -> None:
-    assert make_document.document() == DOCUMENT
+    assert readable(load_contract()) == DOCUMENT
 
 
 def test_nothing_of_the_tables_is_missing(contract: Contract) -> None:
@@ -83,7 +83,7 @@ def test_worked_frames_are_sound_and_say_what_the_chart_says(contract: Contract)
     codec = load_codec(contract)
     for chart in contract.charts:
         for step in chart.step:
-            data = frame_of(contract, step, make_document.encode)
+            data = frame_of(contract, step, encoder(contract))
             frame = codec.frames.unpack(data)
             assert isinstance(frame, Frame)
             assert frame.number == step.number

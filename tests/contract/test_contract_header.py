@@ -178,6 +178,6 @@ def test_a_displayed_state_that_depends_on_the_lease_is_told(copy: Copy) -> None
 
 def test_it_runs_by_itself(contract: Contract) -> None:
 
-    command = [sys.executable, "-m", "protobench.contract.header"]
+    command = [sys.executable, "-m", "protobench.cli", "contract", "header"]
     done = subprocess.run(command, capture_output=True, text=True, check=True, timeout=60)
     assert done.stdout == generate_header(contract)
