@@ -108,7 +108,7 @@ def derive_items(
     conditions = {
         "bonds": description.get("faces", 0) >= 1 and all(name in motions for name in BONDING),
         "ballistic": any(motion.no_return_ms for motion in travels),
-        "stoppable": any(not m.no_return_ms or m.no_return_ms >= STOPPABLE_MS for m in travels),
+        "stoppable": any(motion.stoppable_ms >= STOPPABLE_MS for motion in travels),
         "holding": any(motion.halt_category == "cat-2" for motion in motions.values()),
         "travel": bool(travels),
     }

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from protobench.judge import Failed, Inconclusive
+from protobench.judge import Failed, Inconclusive, NotApplicable
 from protobench.suite.bench import Bench
 from protobench.suite.case import case
 from protobench.suite.port import Received
@@ -458,7 +458,7 @@ def test_overflow(bench: Bench) -> None:
     a.take_lease(30_000)
     places = bench.facts.description["faults"]
     if places > MOST_PLACES:
-        raise Inconclusive(f"{places} places would take too long to fill")
+        raise NotApplicable(f"{places} places would take too long to fill")
     code = _code(bench, "over-current")
     for _ in range(places):
         a.assist("raise", code=code)
@@ -496,7 +496,7 @@ def test_overflow_standing(bench: Bench) -> None:
     a.take_lease(30_000)
     places = bench.facts.description["faults"]
     if places > MOST_PLACES:
-        raise Inconclusive(f"{places} places would take too long to fill")
+        raise NotApplicable(f"{places} places would take too long to fill")
     code, other = _code(bench, "over-current"), _code(bench, "position-lost")
     for _ in range(places):
         a.assist("raise", code=code)
