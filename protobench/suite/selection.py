@@ -14,18 +14,21 @@ _WORDS = ("and", "or", "not", "(", ")")
 def select(cases: Sequence[CaseInfo], expression: str | None) -> list[CaseInfo]:
     """The cases that an expression selects; all of them without one.
 
-    A word selects the cases whose id contains it, whose class or level it is, or which cover the clause it names;
-    words are joined by ``and``, ``or``, ``not`` and parentheses. Raises ValueError, with the place, for anything else.
+    A whole id selects that case; another word selects the cases whose id contains it, whose class or level it is, or
+    which cover the clause it names. Words are joined by ``and``, ``or``, ``not`` and parentheses. Raises ValueError,
+    with the place, for anything else.
     """
     if expression is None:
         return list(cases)
-    return [info for info in cases if _Reader(expression, info).value()]
+    ids = frozenset(info.id for info in cases)
+    return [info for info in cases if _Reader(expression, info, ids).value()]
 
 
 class _Reader:
     """Recursive descent over ``or``, ``and``, ``not``; evaluates as it reads."""
 
-    def __init__(self, text: str, info: CaseInfo) -> None:
+    def __init__(self, text: str, info: CaseInfo, ids: frozenset[str]) -> None:
+        self._ids = ids
         self._text = text
         self._info = info
         self._tokens = self._split(text)
@@ -77,6 +80,8 @@ class _Reader:
 
     def _selects(self, word: str) -> bool:
         info = self._info
+        if word in self._ids:
+            return word == info.id
         return word in info.id or word == info.case_class or word in info.clauses or word == info.level
 
     def _take(self, word: str) -> bool:
