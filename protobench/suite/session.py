@@ -157,6 +157,7 @@ class Session:
             self._attempt(lambda: self.bench.begin(info.id), found)
             if not found:
                 self._attempt(lambda: info.function(self.bench), found)
+            shown = len(self.bench.port.transcript) if found else None
             self._attempt(self.bench.end, found, "postamble: ")
             found += [
                 (Verdict.FAIL, f"{violation.clause}: {violation.reason}")
@@ -175,7 +176,7 @@ class Session:
             return Verdict.PASS.word, "", ""
         worst = max(verdict for verdict, _ in found)
         reasons = [reason for verdict, reason in found if verdict is worst]
-        return worst.word, reasons[0], self._detail(reasons[1:])
+        return worst.word, reasons[0], self._detail(reasons[1:], shown)
 
     def _attempt(self, step: Any, found: list[tuple[Verdict, str]], prefix: str = "") -> None:
         try:
@@ -189,9 +190,10 @@ class Session:
         except Exception as error:  # noqa: BLE001 - a defect of the bench or of a case is a verdict of its own
             found.append((Verdict.ERROR, f"{prefix}{type(error).__name__}: {error}"))
 
-    def _detail(self, more: list[str] | None = None) -> str:
+    def _detail(self, more: list[str] | None = None, shown: int | None = None) -> str:
+        """The exchange up to the failure; what the postamble did after it is in the conformance log."""
         lines = [f"also: {reason}" for reason in more or []]
-        transcript = self.bench.port.transcript
+        transcript = self.bench.port.transcript[:shown]
         if len(transcript) > DETAIL_LINES:
             lines.append(f"... {len(transcript) - DETAIL_LINES} earlier frames are in the conformance log")
         return "\n".join(lines + transcript[-DETAIL_LINES:])
