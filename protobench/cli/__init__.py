@@ -11,8 +11,6 @@ import typer
 from protobench import __version__
 from protobench.cli import check, contract, decode, emulate
 
-INTERRUPTED = 130
-
 app = typer.Typer(
     name="protobench",
     help="Judge, decode and emulate robot modules that speak the Module Command Link.",
@@ -55,9 +53,6 @@ def main() -> None:
     """The console script."""
     try:
         app()
-    except KeyboardInterrupt:
-        typer.echo("interrupted", err=True)
-        sys.exit(INTERRUPTED)
     except BrokenPipeError:
         sys.stderr.close()
         sys.exit(1)

@@ -32,7 +32,7 @@ def decode(
     """Explain frames field by field; dropped ones too, with the reason.
 
     Bytes are given as hex (spaces, colons, commas and 0x allowed) or as a binary file. Without --stream or --bare, what
-    begins with 00 or ends in 00 and holds a sound frame as a stream is taken for a stream.
+    is no sound frame but holds one when read as a stream is taken for a stream.
     Exit status 1 when a frame was dropped or would be refused.
 
     Example: protobench decode 0102000100010001000000010000a1b200000007805c14faf3
@@ -85,9 +85,11 @@ def _guess(codec: Codec, data: bytes) -> list[bytes | Dropped]:
 
     if isinstance(codec.frames.unpack(data), Frame):
         return [data]
-    if data[:1] == b"\0" or data[-1:] == b"\0":
-        return codec.split_part(b"\0" + data)
-    return [data]
+    units = codec.split_part(b"\0" + data)
+    found = [
+        unit for unit in units if isinstance(unit, bytes) and isinstance(codec.frames.unpack(unit), Frame)
+    ]
+    return units if found else [data]
 
 
 def _explain(codec: Codec, unit: bytes | Dropped) -> Explanation:
