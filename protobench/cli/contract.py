@@ -19,9 +19,19 @@ VERSION = "1.0"
 FOUND, NOT_FOUND = 0, 1
 
 
-def _load(version: str, root: Path | None = None) -> Contract:
-    from protobench.contract import ContractError, load_contract  # noqa: PLC0415 - slow to import: not for --help
+def _expect_known(version: str) -> None:
+    from protobench.contract import spec_root  # noqa: PLC0415 - slow to import: not for --help
 
+    known = sorted(path.parent.name for path in spec_root().glob("*/contract.toml"))
+    if version not in known:
+        raise typer.BadParameter(f"{version!r}: one of {', '.join(known)}", param_hint="--contract-version")
+
+
+def _load(version: str, root: Path | None = None) -> Contract:
+    from protobench.contract import ContractError, load_contract  # noqa: PLC0415
+
+    if root is None:
+        _expect_known(version)
     try:
         return load_contract(version, root)
     except ContractError as error:
@@ -95,11 +105,12 @@ def lint(version: Version = VERSION) -> None:
     """Check the contract's files; one line a finding, with file, path and rule."""
     from protobench.contract.lint import lint as find  # noqa: PLC0415
 
+    _expect_known(version)
     problems = find(version)
     for problem in problems:
         typer.echo(str(problem))
     if problems:
-        typer.echo(f"{len(problems)} findings", err=True)
+        typer.echo(f"{len(problems)} finding{'s' if len(problems) > 1 else ''}", err=True)
         raise typer.Exit(NOT_FOUND)
     contract = _load(version)
     typer.echo(f"{contract.name} {contract.version}: no findings in {len(contract.clauses)} clauses")
@@ -127,12 +138,16 @@ def vectors(
     from protobench.contract import ContractError  # noqa: PLC0415
     from protobench.contract.vectors import load_vectors  # noqa: PLC0415
 
+    _expect_known(version)
     try:
         files = load_vectors(version)
     except ContractError as error:
         typer.echo(str(error), err=True)
         raise typer.Exit(NOT_FOUND) from None
     found = [vector for file in files if area is None or area in file.area for vector in file.vectors]
+    if not found:
+        areas = ", ".join(file.area for file in files)
+        raise typer.BadParameter(f"{area!r} is part of no area's name; there are {areas}", param_hint="AREA")
     for vector in found:
         typer.echo(f"{vector.id}  {vector.purpose}  {vector.data.hex()}")
     typer.echo(f"{len(found)} vectors", err=True)

@@ -35,7 +35,7 @@ def decode(
     is no sound frame but holds one when read as a stream is taken for a stream.
     Exit status 1 when a frame was dropped or would be refused.
 
-    Example: protobench decode 0102000100010001000000010000a1b200000007805c14faf3
+    Example: protobench decode 010300030001ffffffffffff1e2feb8a7311d8a481006465756399
     """
     from protobench.wire import load_codec  # noqa: PLC0415 - slow to import: not for --help
 
@@ -43,7 +43,7 @@ def decode(
         raise typer.BadParameter("choose one", param_hint="--stream, --bare")
     data = _read(source)
     codec = load_codec()
-    units = [data] if bare else codec.split_part(b"\0" + data) if stream else _guess(codec, data)
+    units = _split(codec, data, bare=bare, stream=stream)
     explained = [(unit, _explain(codec, unit)) for unit in units]
     if as_json:
         typer.echo(json.dumps([_as_json(unit, found) for unit, found in explained], indent=2))
@@ -51,6 +51,8 @@ def decode(
         console = Console()
         for unit, found in explained:
             _print(console, unit, found)
+    if not explained:
+        typer.echo("no frame in there" if data else "no bytes were given", err=True)
     if any(not found.header or found.dropped or found.problems for _, found in explained) or not explained:
         raise typer.Exit(NOT_SOUND)
 
@@ -80,9 +82,16 @@ def _unhex(text: str) -> bytes:
     return bytes.fromhex(re.sub(r"0[xX]|[\s:,]", "", text))
 
 
-def _guess(codec: Codec, data: bytes) -> list[bytes | Dropped]:
+def _split(codec: Codec, data: bytes, *, bare: bool, stream: bool) -> list[bytes | Dropped]:
+    """The frames in there; without a hint, one sound bare frame is not taken for a stream."""
     from protobench.wire import Frame  # noqa: PLC0415
 
+    if not data:
+        return []
+    if bare:
+        return [data]
+    if stream:
+        return codec.split_part(b"\0" + data)
     if isinstance(codec.frames.unpack(data), Frame):
         return [data]
     units = codec.split_part(b"\0" + data)
@@ -129,7 +138,8 @@ def _line(line: Line) -> dict[str, str]:
 
 def _print(console: Console, unit: bytes | Dropped, found: Explanation) -> None:
     data = _bytes(unit)
-    console.print(Text(f"{found.kind or 'frame'}, {len(data)} bytes", style="bold"))
+    size = "1 byte" if len(data) == 1 else f"{len(data)} bytes"
+    console.print(Text(f"{found.kind or 'frame'}, {size}", style="bold"))
     console.print(Text(f"  {data.hex(' ')}"), soft_wrap=True)
     if found.dropped is not None:
         console.print(Text(f"  dropped: {found.dropped.reason}, {found.dropped.detail}"), soft_wrap=True)

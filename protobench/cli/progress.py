@@ -45,7 +45,7 @@ class RunProgress:
         self._total = count
         self._task = self._live.add_task("", total=count)
         if not self._console.is_terminal:
-            self._console.print(f"{count} cases", highlight=False)
+            self._console.print(f"{count} case{'s' if count > 1 else ''}", highlight=False)
 
     def case_begins(self, case_id: str, index: int) -> None:
         if self._task is not None:

@@ -11,20 +11,20 @@ SUMMARY = ("pass", "fail", "inconc", "error", NOT_APPLICABLE)
 
 
 def build_report(record: RunRecord, contract: Contract) -> dict[str, Any]:
-    """The report: contract, seed, iut, environment, summary, cases, clauses.
+    """The report: contract, seed, iut, environment, summary, cases, clauses; ``stopped`` too when a run was broken off.
 
     A clause's verdict is the worst of the applicable cases that cover it, ``none`` when no case judged it.
     """
-    return {
+    report: dict[str, Any] = {
         "contract": record.contract,
         "seed": record.seed,
         "iut": record.iut,
         "environment": record.environment,
         "summary": {word: record.count(word) for word in SUMMARY},
-        "stopped": record.stopped,
         "cases": [_case(case) for case in record.cases],
         "clauses": _clauses(record, contract),
     }
+    return report if record.stopped is None else {**report, "stopped": record.stopped}
 
 
 def _case(case: CaseRecord) -> dict[str, Any]:
