@@ -48,8 +48,8 @@ setup: $(READY) ## make .venv from the lock, the project in it
 run: $(READY) ## judge the embedded emulated module; report in build/report
 	$(BIN)/protobench check --out build/report
 
-firmware: $(TOOLS) ## build the C module, plain and sanitized
-	@if [ -d $(FIRMWARE) ]; then $(MAKE) --no-print-directory -C $(FIRMWARE) all sanitized; fi
+firmware: $(TOOLS) ## build the C module: plain, sanitized, and broken on purpose
+	@if [ -d $(FIRMWARE) ]; then $(MAKE) --no-print-directory -C $(FIRMWARE) all sanitized variants; fi
 
 # --- checks -----------------------------------------------------------------------------------------------------
 

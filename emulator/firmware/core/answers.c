@@ -73,7 +73,10 @@ void pb_answers_queue_many(struct pb_module *module, const struct pb_answer *ans
     struct pb_many_answer *place = &module->answers.many[found - module->answers.many];
     place->waiting = window_ms > 0;
     place->answer = *answer;
-    place->answer.due_us = module->now_us + pb_random_up_to(&module->random, 1000u * window_ms);
+    if (PB_VARIANT(window_not_spread))
+        place->answer.due_us = module->now_us + 1000u * (uint64_t)window_ms;
+    else
+        place->answer.due_us = module->now_us + pb_random_up_to(&module->random, 1000u * window_ms);
 }
 
 bool pb_answers_have_left(const struct pb_module *module, uint32_t serial)

@@ -64,7 +64,7 @@ static void stop_running(struct pb_module *module, uint8_t cause)
 {
     struct pb_motion *motion = &module->motion;
     struct pb_slot *slot = motion->running;
-    if (slot == NULL)
+    if (slot == NULL || (PB_VARIANT(halt_lets_motion_end) && cause == PB_CAUSE_HALT))
         return;
     if (motion->committed) { /* it can only land */
         if (strength(cause) > strength(slot->interrupted))
@@ -86,7 +86,8 @@ static void stop_running(struct pb_module *module, uint8_t cause)
 void pb_ending_stop_all(struct pb_module *module, uint8_t cause)
 {
     stop_running(module, cause);
-    pb_ending_all_waiting(module, PB_SLOT_QUEUED, cause);
+    if (!PB_VARIANT(halt_keeps_queue) || cause != PB_CAUSE_HALT)
+        pb_ending_all_waiting(module, PB_SLOT_QUEUED, cause);
     pb_ending_all_waiting(module, PB_SLOT_SCHEDULED, cause);
     pb_ending_form(module);
 }

@@ -49,19 +49,22 @@ uint8_t pb_history_compare(struct pb_module *module, const struct pb_request *re
         return 0;
     session->last_use = ++module->history.uses;
     const uint32_t ahead = request->header.number - session->highest;
-    if (ahead != 0 && ahead < HALF_RANGE)
+    if (PB_VARIANT(numbers_compared_plainly) ? request->header.number > session->highest
+                                             : ahead != 0 && ahead < HALF_RANGE)
         return 0;
     const struct pb_entry *entry = find_entry(module, session, request->header.number);
     if (entry != NULL) {
-        if (entry->digest != pb_history_digest(request))
+        if (entry->digest != pb_history_digest(request) && !PB_VARIANT(conflict_unseen))
             return PB_REFUSAL_CONFLICT;
+        if (PB_VARIANT(copy_executed_again))
+            return 0;
         *copy = entry->receipt;
         return PB_HISTORY_COPY;
     }
     const uint32_t behind = session->highest - request->header.number;
-    if (behind >= PB_LIMIT_NUMBER_WINDOW || (session->seen >> behind & 1u) != 0)
+    if (behind >= PB_LIMIT_NUMBER_WINDOW || (PB_VARIANT(window_half) && behind >= 16) || (session->seen >> behind & 1u) != 0)
         return PB_REFUSAL_ANSWER_EXPIRED;
-    return PB_REFUSAL_LATE_UNSEEN;
+    return PB_VARIANT(overtaken_accepted) ? 0 : PB_REFUSAL_LATE_UNSEEN;
 }
 
 /* A free place, or that of the session used longest ago; never the lease holder's. */
@@ -72,7 +75,7 @@ static struct pb_session *make_room(struct pb_module *module)
         struct pb_session *session = &module->history.sessions[i];
         if (!session->used)
             return session;
-        if (pb_lease_is_holder(module, session->source, session->session))
+        if (pb_lease_is_holder(module, session->source, session->session) && !PB_VARIANT(holder_pushed_out))
             continue;
         if (oldest == NULL || (int32_t)(session->last_use - oldest->last_use) < 0)
             oldest = session;

@@ -13,12 +13,15 @@ static void count(uint16_t *counter)
 
 void pb_intake_drop(struct pb_module *module, uint8_t reason)
 {
+    if (PB_VARIANT(drops_counted_twice) && reason == PB_DROP_CRC)
+        count(&module->drops[reason - 1]);
     count(&module->drops[reason - 1]);
 }
 
 static void refuse_silently(struct pb_module *module)
 {
-    count(&module->silent_refusals);
+    if (!PB_VARIANT(silent_refusal_uncounted))
+        count(&module->silent_refusals);
 }
 
 /* ------------------------------------------------------------------------------------------------ addresses */
@@ -56,7 +59,7 @@ static bool is_to_many(const struct pb_header *header)
 static uint8_t check_source(struct pb_module *module, const struct pb_header *header)
 {
     if (module->address != PB_ADDRESS_UNASSIGNED && header->source == module->address) {
-        if (!pb_faults_has_latched_code(module, PB_FAULT_ADDRESS_CONFLICT))
+        if (!PB_VARIANT(own_address_ignored) && !pb_faults_has_latched_code(module, PB_FAULT_ADDRESS_CONFLICT))
             pb_faults_happen(module, PB_FAULT_ADDRESS_CONFLICT);
         return PB_DROP_OWN_SOURCE;
     }
@@ -127,7 +130,8 @@ static void take_command(struct pb_module *module, const struct pb_request *requ
     const uint8_t standing = pb_history_compare(module, request, &receipt);
     if (standing == PB_HISTORY_COPY) {
         answer_with_receipt(module, request, &receipt);
-        pb_slots_ask_resend(module, &request->header, module->answers.queued);
+        if (!PB_VARIANT(copy_brings_no_outcome))
+            pb_slots_ask_resend(module, &request->header, module->answers.queued);
         return;
     }
     if (standing != 0) {
@@ -199,7 +203,7 @@ static void take_request(struct pb_module *module, const struct pb_request *requ
 /* Another major version: the body is not read, the history not touched. */
 static void refuse_version(struct pb_module *module, const struct pb_header *header)
 {
-    if (is_to_many(header)) {
+    if (is_to_many(header) || PB_VARIANT(other_major_silent)) {
         refuse_silently(module);
     } else if (!pb_answers_have_room(module)) {
         pb_intake_drop(module, PB_DROP_NO_ROOM);
@@ -245,7 +249,8 @@ static uint32_t halt_window_ms(const struct pb_header *header, const uint8_t *fr
 static void take_halt(struct pb_module *module, const struct pb_header *header, const uint8_t *frame, size_t size)
 {
     const uint8_t disposition = pb_state_halt(module, PB_HALT_CAUSE_REQUEST);
-    if (!pb_address_is_unicast(header->source) || header->source == module->address)
+    if (!PB_VARIANT(halt_answered_to_nobody) &&
+        (!pb_address_is_unicast(header->source) || header->source == module->address))
         return; /* nobody to answer; neither a drop nor a fault */
     struct pb_answer answer = pb_answer_to(module, header, PB_KIND_HALT_RECEIPT);
     answer.first = disposition;
@@ -284,7 +289,8 @@ static void take_other(struct pb_module *module, const struct pb_header *header,
         refuse_version(module, header);
         return;
     }
-    if (header->body_length != size - PB_HEADER_SIZE - PB_CHECK_SIZE || header->body_length > PB_BODY_SIZE_MAX) {
+    if (!PB_VARIANT(length_trusted) &&
+        (header->body_length != size - PB_HEADER_SIZE - PB_CHECK_SIZE || header->body_length > PB_BODY_SIZE_MAX)) {
         pb_intake_drop(module, PB_DROP_LENGTH);
         return;
     }

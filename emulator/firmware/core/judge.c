@@ -40,7 +40,7 @@ enum { KEY_EPOCH = PB_KEY_MOVE_EPOCH, KEY_LEASE = PB_KEY_MOVE_LEASE };
 
 static uint8_t check_epoch(const struct pb_module *module, const struct pb_request *request)
 {
-    return pb_request_number(request, KEY_EPOCH, -1) == module->epoch ? 0 : PB_REFUSAL_STALE_EPOCH;
+    return PB_VARIANT(epoch_unchecked) || pb_request_number(request, KEY_EPOCH, -1) == module->epoch ? 0 : PB_REFUSAL_STALE_EPOCH;
 }
 
 static uint8_t check_epoch_and_lease(const struct pb_module *module, const struct pb_request *request)
@@ -48,7 +48,7 @@ static uint8_t check_epoch_and_lease(const struct pb_module *module, const struc
     const uint8_t reason = check_epoch(module, request);
     if (reason != 0)
         return reason;
-    return pb_request_number(request, KEY_LEASE, -1) == module->lease.number ? 0 : PB_REFUSAL_STALE_LEASE;
+    return PB_VARIANT(lease_number_unchecked) || pb_request_number(request, KEY_LEASE, -1) == module->lease.number ? 0 : PB_REFUSAL_STALE_LEASE;
 }
 
 static bool is_holder(const struct pb_module *module, const struct pb_request *request)
@@ -90,7 +90,7 @@ static uint8_t fence(const struct pb_module *module, const struct pb_request *re
         if (request->many)
             return fence_many(module, request);
         reason = check_epoch_and_lease(module, request);
-        return reason == 0 && !is_holder(module, request) ? PB_REFUSAL_NOT_HOLDER : reason;
+        return reason == 0 && !PB_VARIANT(anyone_commands) && !is_holder(module, request) ? PB_REFUSAL_NOT_HOLDER : reason;
     }
 }
 
@@ -132,14 +132,14 @@ static uint8_t check_occurrences(struct pb_module *module, const struct pb_reque
             return PB_REFUSAL_NO_SUCH_FAULT;
         stands = stands || pb_faults_is_standing(module, fault->code);
     }
-    return stands ? PB_REFUSAL_CAUSE_STANDS : 0;
+    return stands && !PB_VARIANT(clears_what_stands) ? PB_REFUSAL_CAUSE_STANDS : 0;
 }
 
 static uint8_t check_move_state(const struct pb_module *module, const struct pb_request *request, uint8_t *key)
 {
     if (module->state.halt_latch)
         return PB_REFUSAL_HALTED;
-    if (module->state.fault_latch)
+    if (module->state.fault_latch && !PB_VARIANT(energizes_while_faulted))
         return PB_REFUSAL_FAULT_LATCHED;
     if (request->header.kind == PB_KIND_ENERGIZE)
         return 0;
@@ -177,7 +177,8 @@ static uint8_t check_state(struct pb_module *module, const struct pb_request *re
     case PB_KIND_ASSIGN_ADDRESS:
         return activity == PB_ACTIVITY_ENERGIZED ? PB_REFUSAL_ENERGIZED : moving;
     case PB_KIND_RESET:
-        if (pb_request_number(request, PB_KEY_RESET_HALT_COUNT, -1) != module->state.halt_count)
+        if (pb_request_number(request, PB_KEY_RESET_HALT_COUNT, -1) != module->state.halt_count &&
+            !PB_VARIANT(reset_of_any_count))
             return PB_REFUSAL_NEWER_HALT;
         return moving;
     case PB_KIND_TAKE_LEASE:
@@ -201,6 +202,10 @@ static uint8_t check_time(const struct pb_module *module, const struct pb_reques
     const uint32_t start_at = (uint32_t)pb_request_number(request, PB_KEY_MOVE_START_AT, 0);
     const uint32_t lead_us = start_at - pb_state_clock(module, module->now_us);
     *key = PB_KEY_MOVE_START_AT;
+    if (PB_VARIANT(late_start_runs) && lead_us >= 0x80000000u) {
+        *key = PB_NO_KEY;
+        return 0;
+    }
     if (lead_us >= 0x80000000u || lead_us < 1000u * PB_LIMIT_START_LEAD_MIN)
         return PB_REFUSAL_LATE;
     if (lead_us > 1000u * PB_LIMIT_START_LEAD_MAX)

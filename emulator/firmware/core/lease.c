@@ -18,15 +18,19 @@ void pb_lease_grant(struct pb_module *module, uint32_t source, uint32_t session,
     module->lease.held = true;
     module->lease.source = source;
     module->lease.session = session;
-    module->lease.number++;
+    if (!PB_VARIANT(lease_number_stays))
+        module->lease.number++;
     module->lease.duration_ms = duration_ms;
     pb_lease_extend(module);
-    pb_faults_announce(module);
+    if (!PB_VARIANT(grant_tells_nothing))
+        pb_faults_announce(module);
 }
 
 void pb_lease_extend(struct pb_module *module)
 {
     module->lease.end_us = module->now_us + 1000u * (uint64_t)module->lease.duration_ms;
+    if (PB_VARIANT(lease_lasts_longer))
+        module->lease.end_us += 1000000u;
 }
 
 uint32_t pb_lease_remaining_ms(const struct pb_module *module)
@@ -41,6 +45,7 @@ void pb_lease_end(struct pb_module *module)
     module->lease.held = false;
     module->lease.source = 0;
     module->lease.session = 0;
-    pb_ending_stop_all(module, PB_CAUSE_LEASE_END);
+    if (!PB_VARIANT(lease_end_moves_on))
+        pb_ending_stop_all(module, PB_CAUSE_LEASE_END);
     pb_state_settle_power(module);
 }

@@ -33,9 +33,6 @@
 struct pb_module {
     const struct pb_config *config;
     struct pb_port port;
-#ifdef PB_WITH_VARIANTS
-    int variant;
-#endif
 
     /* outlast a restart */
     struct pb_random random;

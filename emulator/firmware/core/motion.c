@@ -74,8 +74,8 @@ static void enter_phase(struct pb_module *module, uint8_t phase)
 {
     struct pb_motion *motion = &module->motion;
     motion->phase = phase;
-    if (motion->armed == phase) {
-        motion->armed = 0;
+    if (motion->hold_phase == phase) {
+        motion->hold_phase = 0;
         motion->held = true;
         pb_plant_freeze(&module->plant, module->now_us);
     } else {
@@ -117,7 +117,7 @@ static void reach_rest(struct pb_module *module)
     motion->running = NULL;
     module->state.activity = PB_ACTIVITY_ENERGIZED;
     pb_slots_form(module, slot, displacement, duration_ms > UINT16_MAX ? UINT16_MAX : (uint16_t)duration_ms);
-    if (slot->outcome != PB_OUTCOME_DONE)
+    if (slot->outcome != PB_OUTCOME_DONE && !PB_VARIANT(predecessor_forgotten))
         pb_ending_all_waiting(module, PB_SLOT_QUEUED, PB_CAUSE_PREDECESSOR);
     pb_ending_form(module);
     pb_state_settle_power(module);
@@ -180,14 +180,14 @@ static void begin(struct pb_module *module, struct pb_slot *slot)
 /* Phase ready: held there if that was asked for. A scheduled motion that is held becomes the first of the queue. */
 static void get_ready(struct pb_module *module, struct pb_slot *slot)
 {
-    if (module->motion.armed != PB_PHASE_READY) {
+    if (module->motion.hold_phase != PB_PHASE_READY) {
         begin(module, slot);
         return;
     }
     const struct pb_slot *head = pb_slots_first(module, PB_SLOT_QUEUED, false);
     if (slot->state == PB_SLOT_SCHEDULED && head != NULL)
         slot->order = head->order - 1u;
-    module->motion.armed = 0;
+    module->motion.hold_phase = 0;
     slot->state = PB_SLOT_QUEUED;
     slot->held = true;
 }
@@ -255,7 +255,7 @@ bool pb_motion_step(struct pb_module *module)
 
 void pb_motion_hold(struct pb_module *module, uint8_t phase)
 {
-    module->motion.armed = phase;
+    module->motion.hold_phase = phase;
 }
 
 /* Lets go what is held; with nothing held, the next motion is not held either. */
@@ -273,5 +273,5 @@ void pb_motion_release(struct pb_module *module)
         module->slots.slots[i].held = false;
     }
     if (!was_held)
-        motion->armed = 0;
+        motion->hold_phase = 0;
 }

@@ -17,7 +17,7 @@ struct pb_motion {
     bool committed;     /* past its point of no return */
     bool held;          /* kept in its phase by assist */
     uint64_t next_us;   /* when the phase ends, or rest is reached */
-    uint8_t armed;      /* phase in which the next motion is to be held; 0: none */
+    uint8_t hold_phase; /* phase in which the next motion is to be held; 0: none */
     bool position_known;
 };
 

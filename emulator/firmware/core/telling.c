@@ -53,7 +53,7 @@ uint64_t pb_faults_next_due(const struct pb_module *module)
     uint64_t due_us = PB_NEVER;
     for (unsigned i = 0; i <= module->config->faults; i++)
         due_us = pb_earlier(due_us, wanted_us(&faults->list[i]));
-    if (due_us != PB_NEVER && faults->any_sent && due_us < faults->last_sent_us + SPACING_US)
+    if (due_us != PB_NEVER && faults->any_sent && !PB_VARIANT(fault_events_crowd) && due_us < faults->last_sent_us + SPACING_US)
         due_us = faults->last_sent_us + SPACING_US;
     return due_us;
 }
@@ -80,6 +80,7 @@ void pb_faults_send_due(struct pb_module *module)
     if (first == NULL || !pb_encode_fault(module, first))
         return;
     module->faults.any_sent = true;
+    first->told = first->told || PB_VARIANT(fault_told_once);
     module->faults.last_sent_us = module->now_us;
     first->next_send_us = module->now_us + 1000u * (uint64_t)first->interval_ms;
     first->interval_ms = first->interval_ms < REPEAT_SLOWEST_MS / 2 ? 2 * first->interval_ms : REPEAT_SLOWEST_MS;

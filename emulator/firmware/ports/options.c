@@ -6,6 +6,7 @@
 #include <string.h>
 
 #include "bytes.h"
+#include "variant.h"
 
 static void fail(const struct options *options, const char *option, const char *value, const char *rule)
 {
@@ -25,6 +26,7 @@ static void print_help(const struct options *options, const char *purpose, bool 
            "  --storage FILE    keep epoch, address and groups there (default: until the process ends)\n"
 #ifdef PB_WITH_VARIANTS
            "  --variant NAME    be this deliberately broken module\n"
+           "  --variants        list them\n"
 #endif
            "  --verbose         tell on standard error what happens\n"
            "  --help            show this\n\n"
@@ -56,6 +58,14 @@ static void read_hardware_id(struct options *options, const char *value)
     options->has_hardware_id = true;
 }
 
+#ifdef PB_WITH_VARIANTS
+static void choose_variant(const struct options *options, const char *value)
+{
+    if (!pb_variant_by_name(value, &pb_variant_chosen))
+        fail(options, "--variant", value, "no such variant; --variants lists them");
+}
+#endif
+
 /* True: the option and its value were taken. */
 static bool take_valued(struct options *options, const char *option, const char *value, bool takes_port)
 {
@@ -69,7 +79,7 @@ static bool take_valued(struct options *options, const char *option, const char 
         options->storage_path = value;
 #ifdef PB_WITH_VARIANTS
     else if (strcmp(option, "--variant") == 0)
-        options->variant = value;
+        choose_variant(options, value);
 #endif
     else if (takes_port && strcmp(option, "--port") == 0)
         options->port = (uint16_t)read_number(options, option, value, UINT16_MAX);
@@ -92,6 +102,12 @@ void options_read(struct options *options, int argc, char **argv, const char *pu
             print_help(options, purpose, takes_port);
             exit(0);
         }
+#ifdef PB_WITH_VARIANTS
+        if (strcmp(argv[i], "--variants") == 0) {
+            pb_variants_print();
+            exit(0);
+        }
+#endif
         if (strcmp(argv[i], "--verbose") == 0) {
             options->verbose = true;
             continue;

@@ -17,7 +17,6 @@ struct options {
     bool verbose;
     const char *bind_address; /* module-tcp only, as is port */
     uint16_t port;
-    const char *variant;
 };
 
 /* Reads the arguments. Prints help and exits 0, or an error and exits 2, where that is due. `takes_port`: --port and

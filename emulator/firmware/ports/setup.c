@@ -19,10 +19,4 @@ void setup_module(const struct options *options, struct pb_config *config, struc
         fprintf(stderr, "%s: configuration: %s\n", options->program, problem);
         exit(2);
     }
-#ifdef PB_WITH_VARIANTS
-    if (options->variant != NULL && !pb_variant_by_name(options->variant, &module->variant)) {
-        fprintf(stderr, "%s: --variant %s: no such variant\n", options->program, options->variant);
-        exit(2);
-    }
-#endif
 }
