@@ -12,6 +12,7 @@ from rich.console import Console
 
 LEVELS = ("required", "recommended")
 PASSED, FAILED, WRONG_USE, INCONCLUSIVE, BENCH_FAILED = 0, 1, 2, 3, 4
+INTERRUPTED = 130
 
 
 def check(
@@ -56,7 +57,7 @@ def check(
     """Judge a module by the conformance cases.
 
     Exit status: 0 nothing failed and all that applies was judged; 1 something failed; 2 wrong use; 3 nothing failed
-    but something was inconclusive; 4 the bench itself failed or nothing ran.
+    but something was inconclusive; 4 the bench itself failed or nothing ran; 130 interrupted.
 
     Example: protobench check --link run:./my-module --out report
     """

@@ -80,6 +80,8 @@ def judge(options: RunOptions, stack: ExitStack, console: Console) -> RunRecord:
         message, status = str(error), check.FAILED
     except (NoModule, LinkError) as error:
         message, status = str(error), check.BENCH_FAILED
+    except KeyboardInterrupt:
+        message, status = "interrupted; a module that was being judged has been sent a halt", check.INTERRUPTED
     stack.close()
     console.print(message, highlight=False, soft_wrap=True, markup=False)
     raise typer.Exit(status)

@@ -6,11 +6,13 @@
 
 from __future__ import annotations
 
+import re
 import xml.etree.ElementTree as ET
 
 from protobench.judge import CaseRecord, RunRecord
 
 _ELEMENTS = {"fail": "failure", "error": "error", "inconc": "skipped", "not_applicable": "skipped"}
+_NOT_XML = re.compile("[^\\t\\n\\x20-\\ud7ff\\ue000-\\ufffd\\U00010000-\\U0010ffff]")
 
 
 def junit_xml(record: RunRecord) -> bytes:
@@ -27,7 +29,7 @@ def junit_xml(record: RunRecord) -> bytes:
     suite = ET.SubElement(root, "testsuite", {"name": f"protobench {record.contract}", **counts})
     properties = ET.SubElement(suite, "properties")
     for name, value in {"seed": record.seed, **record.environment}.items():
-        ET.SubElement(properties, "property", {"name": name, "value": str(value)})
+        ET.SubElement(properties, "property", {"name": name, "value": _clean(str(value))})
     for case in record.cases:
         _add_case(suite, case)
     ET.indent(root)
@@ -52,5 +54,5 @@ def _add_case(suite: ET.Element, case: CaseRecord) -> None:
 
 
 def _clean(text: str) -> str:
-    """Without the control characters that XML 1.0 cannot hold."""
-    return "".join(character if character in "\n\t" or character >= " " else "?" for character in text)
+    """With a question mark for each character that XML 1.0 cannot hold (its production 2)."""
+    return _NOT_XML.sub("?", text)

@@ -1,138 +1,166 @@
-"""``protobench check`` as a user runs it."""
+"""``protobench check`` on its defaults, its report, and its exit statuses for modules that are sound or are not."""
 
 from __future__ import annotations
 
 import json
-import os
-import pty
-import signal
-import subprocess
-import sys
-import time
+import re
+import shlex
 import xml.etree.ElementTree as ET
 from pathlib import Path
 
 import pytest
+from command import invoke, lockstep, python_child, run, words
 
-CHILD_SILENT = "import sys; sys.stdin.buffer.read()"
+from protobench.contract import load_contract
+from protobench.suite.run import list_cases
+
+REPORT_KEYS = ["contract", "seed", "iut", "environment", "summary", "cases", "clauses"]
+SUMMARY_KEYS = ["pass", "fail", "inconc", "error", "not_applicable"]
+CASE_KEYS = ["id", "level", "class", "purpose", "clauses", "verdict", "reason", "duration_s"]
+CLAUSE_KEYS = ["id", "level", "verdict", "cases"]
 
 
-def run(*arguments: str, cwd: Path | None = None) -> subprocess.CompletedProcess[str]:
-    command = [sys.executable, "-m", "protobench.cli", *arguments]
-    return subprocess.run(command, cwd=cwd, capture_output=True, text=True, timeout=120, check=False)
-
-
-def test_defaults_judge_the_embedded_module(tmp_path: Path) -> None:
-    done = run("check", "--out", str(tmp_path / "report"))
-    assert done.returncode == 0, done.stdout[-2000:]
-    report = json.loads((tmp_path / "report" / "report.json").read_text())
-    assert {"contract", "seed", "iut", "environment", "summary", "cases", "clauses"} <= report.keys()
-    assert report["summary"].keys() == {"pass", "fail", "inconc", "error", "not_applicable"}
-    assert report["summary"]["pass"] > 150
-    wanted = {"id", "level", "class", "purpose", "clauses", "verdict", "reason", "duration_s"}
-    assert all(wanted <= case.keys() for case in report["cases"])
-    assert all(clause.keys() == {"id", "level", "verdict", "cases"} for clause in report["clauses"])
-    suite = ET.parse(tmp_path / "report" / "junit.xml").getroot()[0]
+def test_defaults_pass_and_leave_a_report(tmp_path: Path) -> None:
+    done = run("check", "--out", str(tmp_path / "new" / "folder"))
+    assert done.returncode == 0, done.stderr.decode()
+    out = tmp_path / "new" / "folder"
+    assert sorted(path.name for path in out.iterdir()) == ["conformance.log", "junit.xml", "report.json"]
+    report = json.loads((out / "report.json").read_text())
+    assert list(report) == REPORT_KEYS
+    assert list(report["summary"]) == SUMMARY_KEYS
+    assert report["summary"]["fail"] == report["summary"]["inconc"] == report["summary"]["error"] == 0
+    assert {tuple(case) for case in report["cases"]} == {tuple(CASE_KEYS)}
+    assert {tuple(clause) for clause in report["clauses"]} == {tuple(CLAUSE_KEYS)}
+    assert [case["id"] for case in report["cases"]] == [info.id for info in list_cases("required")]
+    assert sum(report["summary"].values()) == len(report["cases"]) >= 100
+    assert [clause["id"] for clause in report["clauses"]] == [clause.id for clause in load_contract().clauses]
+    assert report["iut"]["nature"] == "emulated"
+    assert report["environment"]["time"] == "virtual"
+    suite = ET.parse(out / "junit.xml").getroot().find("testsuite")
+    assert suite is not None
     assert int(suite.attrib["tests"]) == len(report["cases"])
-    log = (tmp_path / "report" / "conformance.log").read_text()
-    assert "# case FRM.every-length begins" in log
-    assert "# case FRM.every-length ends: pass" in log
-    assert " -> describe " in log
+    assert int(suite.attrib["skipped"]) == report["summary"]["not_applicable"]
+    assert f"{report['summary']['pass']} pass, {report['summary']['not_applicable']} not applicable" in (
+        done.stdout.decode()
+    )
+    frames = [line for line in (out / "conformance.log").read_text().splitlines() if not line.startswith("#")]
+    assert len(frames) > 1000
+    assert all(re.fullmatch(r" *\d+\.\d{6} (->|<-|\.\.) .+", line) for line in frames)
 
 
-def test_json_is_all_that_standard_output_holds() -> None:
-    done = run("--log-level", "debug", "check", "--json", "--only", "VER")
+@pytest.mark.parametrize("level", ["debug", "error"])
+def test_json_is_all_that_is_printed(level: str) -> None:
+    done = run("--log-level", level, "check", "--json", "--only", "VER")
     assert done.returncode == 0
-    assert json.loads(done.stdout)["summary"]["pass"] == 4
+    report = json.loads(done.stdout)
+    assert list(report) == REPORT_KEYS
+    assert {case["id"].partition(".")[0] for case in report["cases"]} == {"VER"}
+    assert {clause["verdict"] for clause in report["clauses"]} == {"none", "pass"}
 
 
-def test_list_names_cases_and_judges_none() -> None:
-    done = run("check", "--list", "--only", "HLT-03 and valid")
-    assert done.returncode == 0
-    assert "HLT.every-state" in done.stdout
-    assert all("HLT." in line or "LOD." in line for line in done.stdout.splitlines())
+def test_same_seed_same_log(tmp_path: Path) -> None:
+    logs = []
+    for name, seed in (("a", "5"), ("b", "5"), ("c", "6")):
+        done = invoke("check", "--only", "LSE", "--seed", seed, "--out", str(tmp_path / name))
+        assert done.exit_code == 0
+        logs.append((tmp_path / name / "conformance.log").read_text())
+    assert logs[0] == logs[1] != logs[2]
+
+
+def test_list_names_every_case_once_and_judges_none() -> None:
+    done = invoke("check", "--list", "--link", "tcp://127.0.0.1:1")
+    lines = done.stdout.splitlines()
+    assert done.exit_code == 0
+    assert [line.split()[0] for line in lines] == [info.id for info in list_cases("required")]
+    rows = json.loads(invoke("check", "--list", "--json", "--level", "recommended", "--only", "HLT").stdout)
+    assert [row["id"] for row in rows] == [info.id for info in list_cases("recommended", "HLT")]
+    assert list(rows[0]) == ["id", "level", "class", "purpose", "clauses", "needs"]
+
+
+def test_only_selects_by_area_class_clause_and_whole_id() -> None:
+    def found(expression: str) -> set[str]:
+        return {
+            row["id"] for row in json.loads(invoke("check", "--list", "--json", "--only", expression).stdout)
+        }
+
+    assert found("HLT and not invalid") < found("HLT")
+    assert found("FRM or BDY") == found("FRM") | found("BDY")
+    assert found("SEQ.copied-move") == {"SEQ.copied-move"}
+    assert all("SEQ-03" in info.clauses for info in list_cases("required", "SEQ-03"))
+
+
+def test_a_broken_module_fails_readably_and_its_replay_fails_too(tmp_path: Path) -> None:
+    link = lockstep("halts-for-others")
+    done = run("check", "--link", link, "--only", "HLT.not-included or VER", "--out", str(tmp_path))
+    text = done.stdout.decode()
+    assert done.returncode == 1, done.stderr.decode()
+    assert "FAIL HLT.not-included - A halt for somebody else does nothing." in text
+    assert "ADR-01: a halt for another address must not be answered; halt-receipt came" in text
+    assert f"ADR-01 says: {load_contract().clause('ADR-01').text}" in text
+    assert re.search(r"-> halt #\d+ 0x10001 to 0x2 session [0-9a-f]{8} \{.*\}\n +01 20 00", text)
+    assert re.search(r"<- halt-receipt #\d+ .*disposition=at-rest", text)
+    assert "1 fail" in text
+    (again,) = re.findall(r"^  again: (.+)$", text, re.MULTILINE)
+    program, *arguments = shlex.split(again)
+    assert program == "protobench"
+    repeated = run(*arguments)
+    assert repeated.returncode == 1
+    assert "halt-receipt came" in repeated.stdout.decode()
+    (case,) = [
+        case
+        for case in json.loads((tmp_path / "report.json").read_text())["cases"]
+        if case["verdict"] == "fail"
+    ]
+    assert case["replay"] == again
+    assert any("halt-receipt" in line for line in case["detail"])
+
+
+def test_the_same_program_unbroken_passes() -> None:
+    done = run("check", "--link", lockstep("sound"), "--only", "HLT.not-included or VER")
+    assert done.returncode == 0, done.stdout.decode()
+
+
+def test_nothing_listens() -> None:
+    done = invoke("check", "--link", "tcp://127.0.0.1:1")
+    assert done.exit_code == 4
+    assert done.stdout == ""
+    assert "tcp://127.0.0.1:1: connect: nothing listens there" in done.stderr
 
 
 @pytest.mark.parametrize(
-    ("arguments", "words"),
+    ("link", "reason"),
     [
-        (["--level", "best"], "required, recommended"),
-        (["--only", "HLT and"], "a word is missing"),
-        (["--only", "nothing-like-this"], "selects no case"),
-        (["--link", "carrier-pigeon:"], "must be one of"),
-        (["--link", "tcp://127.0.0.1:9", "--virtual"], "clock that the bench cannot stop"),
-        (["--link", "serial:/dev/ttyUSB77"], "--attended"),
-        (["--link", "tcp://127.0.0.1:no"], "port"),
-        (["--ics", "/no/such/file"], "--ics"),
-        (["--address", "0"], "--address"),
+        ("run:/no/such/module", "no such device or file"),
+        ("lockstep:/no/such/module", "no such device or file"),
+        (python_child("raise SystemExit(7)"), "the program has ended with exit status 7"),
+        (python_child("import sys; sys.stdin.read()"), "no module answered a probe"),
+        (python_child("print('hello, world'); import sys; sys.stdin.read()"), "no module answered a probe"),
     ],
 )
-def test_wrong_use_is_2_and_says_what_is_wrong(arguments: list[str], words: str) -> None:
-    done = run("check", *arguments)
-    assert done.returncode == 2, done.stderr
-    assert words in " ".join(done.stderr.replace("│", " ").split())
-    assert "Traceback" not in done.stderr
+def test_no_module_is_the_bench_failing(link: str, reason: str) -> None:
+    done = run("check", "--link", link)
+    assert done.returncode == 4, done.stderr.decode()
+    assert reason in words(done.stderr.decode())
+    assert done.stdout == b""
 
 
-def test_a_statement_that_names_what_the_contract_does_not_have(tmp_path: Path) -> None:
-    path = tmp_path / "ics.toml"
-    path.write_text('capabilities = ["teleport"]\n')
-    done = run("check", "--ics", str(path))
-    assert done.returncode == 2
-    assert "teleport" in done.stderr
+def test_nothing_judged_is_no_pass() -> None:
+    done = run("check", "--only", "MOT.no-queue")  # the embedded module has a queue
+    assert done.returncode == 4, done.stdout.decode()
+    assert "1 not applicable" in done.stdout.decode()
 
 
-def test_a_module_that_contradicts_its_statement_is_1(tmp_path: Path) -> None:
-    path = tmp_path / "ics.toml"
-    path.write_text('capabilities = ["queue"]\nmotions = ["pivot", "hinge", "bond", "unbond"]\n')
-    done = run("check", "--ics", str(path))
-    assert done.returncode == 1
-    assert "capability assist is described and not stated" in done.stderr
-
-
-def test_no_module_is_4() -> None:
-    for link in (f"run:{sys.executable} -c '{CHILD_SILENT}'", "run:/bin/false", "tcp://127.0.0.1:1"):
-        done = run("check", "--link", link)
-        assert done.returncode == 4, (link, done.stderr)
-        assert "Traceback" not in done.stderr
-        assert done.stderr.strip()
-
-
-def test_progress_is_live_on_terminals_only() -> None:
-    plain = run("check", "--only", "VER")
-    assert "\x1b" not in plain.stderr + plain.stdout
-    leader, follower = pty.openpty()
-    command = [sys.executable, "-m", "protobench.cli", "check", "--only", "VER"]
-    process = subprocess.Popen(
-        command, stdout=subprocess.DEVNULL, stderr=follower, env={**os.environ, "TERM": "xterm"}
-    )
-    os.close(follower)
-    shown = b""
-    while True:
-        try:
-            data = os.read(leader, 4096)
-        except OSError:
-            break
-        if not data:
-            break
-        shown += data
-    assert process.wait(timeout=60) == 0
-    os.close(leader)
-    assert b"\x1b[" in shown
-
-
-def test_interrupting_is_130() -> None:
-    command = [
-        sys.executable,
-        "-m",
-        "protobench.cli",
-        "check",
-        "--link",
-        f"run:{sys.executable} -c '{CHILD_SILENT}'",
+def test_a_statement_is_held_against_the_module(tmp_path: Path) -> None:
+    described = json.loads(run("check", "--json", "--only", "VER").stdout)["iut"]
+    contract = load_contract()
+    capabilities = [c.name for c in contract.capabilities if described["capabilities"] >> c.number & 1]
+    motions = [
+        name for name, number in contract.enum_values("motion").items() if described["motions"] >> number & 1
     ]
-    process = subprocess.Popen(command, stdout=subprocess.PIPE, stderr=subprocess.PIPE)
-    time.sleep(1.0)
-    process.send_signal(signal.SIGINT)
-    _, stderr = process.communicate(timeout=20)
-    assert process.returncode == 130
-    assert b"Traceback" not in stderr
+    ics = tmp_path / "ics.toml"
+    ics.write_text(f"capabilities = {json.dumps(capabilities)}\nmotions = {json.dumps(motions)}\n")
+    assert invoke("check", "--ics", str(ics), "--only", "VER").exit_code == 0
+    ics.write_text(f"motions = {json.dumps(motions[1:])}\n")
+    done = invoke("check", "--ics", str(ics), "--only", "VER")
+    assert done.exit_code == 1
+    assert f"motion {motions[0]} is described and not stated" in done.stderr
