@@ -5,20 +5,13 @@ from __future__ import annotations
 import random
 
 import pytest
-from judging import expect_sound, firmware, judge
+from judging import SEED, expect_sound, firmware, judge
+from sound_configs import CONFIGS
 
-from emulator.config import ModuleConfig
 from emulator.engine import ModuleEngine
 from emulator.storage import Storage
 from protobench.contract import load_contract
 from protobench.links import MemoryLink
-
-PROFILES = {
-    "default": ModuleConfig,
-    "smallest": ModuleConfig.smallest,
-    "slow": ModuleConfig.slow,
-    "holding": ModuleConfig.holding,
-}
 
 
 def test_embedded_module() -> None:
@@ -27,12 +20,10 @@ def test_embedded_module() -> None:
     assert record.environment["time"] == "virtual"
 
 
-@pytest.mark.parametrize("profile", PROFILES)
-@pytest.mark.parametrize("seed", [1, 2])
-def test_python_module(profile: str, seed: int) -> None:
+@pytest.mark.parametrize("name", CONFIGS)
+def test_python_module(name: str) -> None:
     def opener() -> MemoryLink:
-        config = PROFILES[profile]()
-        return MemoryLink(ModuleEngine(config, Storage(), random.Random(seed), load_contract()))
+        return MemoryLink(ModuleEngine(CONFIGS[name], Storage(), random.Random(SEED), load_contract()))
 
     expect_sound(judge(opener=opener))
 
