@@ -15,6 +15,7 @@ PART_SIZE_MAX = 65_536
 HIGH_WATER = 10_000
 DRAIN_MAX = 1_000  # messages taken before what is due is done
 IDLE_MS = 1_000
+PORT_LAST = 65_535
 PREFIXES = ("zmq+tcp://", "zmq+ipc://")
 
 
@@ -51,6 +52,9 @@ def serve(
 
 def _bind(socket: zmq.Socket[bytes], bind: str) -> str:
     endpoint = bind.removeprefix("zmq+")
+    port = endpoint.rpartition(":")[2]
+    if endpoint.startswith("tcp://") and port != "*" and not (port.isdecimal() and int(port) <= PORT_LAST):
+        raise ServeError(f"{bind!r} cannot be served: port {port!r} must be a number up to {PORT_LAST}, or *")
     try:
         socket.bind(endpoint)
     except zmq.ZMQError as error:

