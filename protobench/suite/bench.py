@@ -161,6 +161,14 @@ class Bench:
         drops = {drop.name: answer["drops"][drop.number - 1] for drop in self.contract.drops}
         return drops, answer["silent_refusals"]
 
+    def send_in_pieces(self, frame: bytes, apart_ms: float) -> int:
+        """Send a frame on a stream link in two pieces, some time apart; the time in ns of the last byte."""
+        block = self.language.stuff(frame) + b"\0"
+        self.port.send_raw(block[: len(block) // 2])
+        self.port.wait_ms(apart_ms)
+        self.port.watch.sent(frame, self.language.read(frame), self.port.now_ns)
+        return self.port.send_raw(block[len(block) // 2 :], lead=False)
+
     # ------------------------------------------------------------ before and after a case
 
     def begin(self, case_id: str) -> None:

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from typing import Any, Protocol
 
 from protobench.judge import Failed
-from protobench.links import Chunk, Framing, Link
+from protobench.links import Chunk, Framing, ImpairedLink, Link
 from protobench.suite.language import Language
 from protobench.suite.watch import Watch
 from protobench.wire import Dropped, Frame
@@ -94,6 +94,11 @@ class Port:
         if self.link.virtual:
             return 0.0
         return max(REAL_TIME_U_MS, 3 * self._lateness_ns / 1e6)
+
+    @property
+    def is_lossless(self) -> bool:
+        """Whether a frame cannot be lost, nor an answer be late by the machine's doing."""
+        return self.link.virtual and not isinstance(self.link, ImpairedLink)
 
     @property
     def has_stream(self) -> bool:

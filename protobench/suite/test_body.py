@@ -262,6 +262,7 @@ def test_flags(bench: Bench) -> None:
     clauses=["BDY-12"],
 )
 def test_defaults(bench: Bench) -> None:
+    bench.a.send("status", source=bench.address)  # a fault, so that a page shows something
     for kind in ("read-faults", "read-motions", "probe"):
         first = bench.a.ask(kind, body=canonical({}))
         second = bench.a.ask(kind, body=canonical({0: 0}))
@@ -280,6 +281,9 @@ def test_default_move(bench: Bench) -> None:
     bench.a.make_ready()
     move = bench.a.move(face=0, allow_last_bond=False)
     bench.a.ended(move, "done", "none", "BDY-12")
+    first, second = (bench.a.ask("read-motions", body=canonical(fields)) for fields in ({}, {0: 0}))
+    if first.fields != second.fields:
+        raise Failed("read-motions with its default field is answered differently", clause="BDY-12")
 
 
 @case(

@@ -511,6 +511,29 @@ def test_overflow_standing(bench: Bench) -> None:
 
 
 @case(
+    "FLT.overflow-latches",
+    "inopportune",
+    "A latching fault that finds no place among notices nobody has confirmed still sets the fault latch.",
+    clauses=["FLT-15", "FLT-03"],
+    needs="assist",
+)
+def test_overflow_latches(bench: Bench) -> None:
+    a = bench.a
+    a.restart()
+    places = bench.facts.description["faults"]
+    if places > MOST_PLACES:
+        raise NotApplicable(f"{places} places would take too long to fill")
+    notice, latching = _code(bench, "shell-warm"), _code(bench, "over-current")
+    for _ in range(places):
+        a.assist("raise", code=notice)
+        a.assist("withdraw", code=notice)
+    a.assist("raise", code=latching)
+    if not a.status()["fault_latch"]:
+        raise Failed("a latching fault with the list full of notices set no latch", clause="FLT-15")
+    a.restart()
+
+
+@case(
     "FLT.survives-restart",
     "valid",
     "A fault whose cause survives a restart is latched and announced again; one whose cause does not is gone.",

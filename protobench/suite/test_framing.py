@@ -311,10 +311,14 @@ def test_counters_saturate(bench: Bench) -> None:
     clauses=["FRM-13"],
 )
 def test_reading_not_counted(bench: Bench) -> None:
+    bench.port.send(bench.a.frame("status")[:-1])
+    bench.a.send("status", to=bench.broadcast)
     first = bench.counters()
     for _ in range(5):
         if bench.counters() != first:
             raise Failed("a counter changed by being read", clause="FRM-13")
+    if not first[1] or not any(first[0].values()):
+        raise Failed("a dropped frame and a silent refusal were not counted", clause="FRM-12")
 
 
 @case(

@@ -96,7 +96,7 @@ def test_odd_sources(bench: Bench) -> None:
     "HLT.copies",
     "valid",
     "Copies of a halt are executed each time and answered afresh.",
-    clauses=["HLT-01", "HLT-05"],
+    clauses=["HLT-01", "HLT-05", "HLT-06"],
 )
 def test_copies(bench: Bench) -> None:
     a = bench.a
@@ -194,7 +194,7 @@ def test_scheduled(bench: Bench) -> None:
     "HLT.past-return",
     "inopportune",
     "Past the point of no return a halt says so, the motion lands and notes it, what waits ends halted.",
-    clauses=["HLT-08", "HLT-05", "HLT-07", "HLT-13"],
+    clauses=["HLT-08", "HLT-05", "HLT-07", "HLT-13", "STA-02"],
     needs="ballistic and assist",
 )
 def test_past_return(bench: Bench) -> None:
@@ -361,6 +361,35 @@ def test_to_many(bench: Bench) -> None:
     a.silent("a halt to all without a readable window", "HLT-16", quiet_ms=60)
     if a.status()["halt_count"] != count + len(bodies):
         raise Failed("a halt to all whose body cannot be read must be executed", clause="HLT-02")
+
+
+@case(
+    "HLT.to-group",
+    "valid",
+    "A halt to a group is executed by its members and by nobody else.",
+    clauses=["HLT-01", "ADR-14"],
+    needs="groups",
+)
+def test_to_group(bench: Bench) -> None:
+    a = bench.a
+    original = list(a.read("read-groups")["groups"])
+    a.take_lease()
+    a.accepted("set-groups", groups=[GROUP], clause="ADR-13")
+    try:
+        count = a.status()["halt_count"]
+        sent = a.send("halt", to=GROUP, answer_window=50)
+        receipt = a.answer(sent, 50 + a.patience_ms)
+        if receipt is None or receipt.kind != "halt-receipt" or a.status()["halt_count"] != count + 1:
+            raise Failed("a halt to a group must be executed and answered by its member", clause="HLT-01")
+        a.send("halt", to=GROUP + 1, answer_window=50)
+        bench.port.wait_ms(60)
+        if a.status()["halt_count"] != count + 1:
+            raise Failed("a halt to a group was executed by a module that is no member", clause="ADR-14")
+    finally:
+        a.accepted("set-groups", groups=original, clause="ADR-13")
+
+
+GROUP = 0xF0000A00
 
 
 @case("HLT.not-included", "invalid", "A halt for somebody else does nothing.", clauses=["HLT-01", "ADR-01"])

@@ -60,6 +60,25 @@ def test_take(bench: Bench) -> None:
 
 
 @case(
+    "LSE.remaining",
+    "valid",
+    "What remains of the lease is told as less and less, never as more than is left.",
+    clauses=["LSE-14"],
+)
+def test_remaining(bench: Bench) -> None:
+    a = bench.a
+    granted = a.take_lease(5000)
+    for _ in range(3):
+        bench.port.wait_ms(100)
+        passed_ms = (bench.port.now_ns - granted.time_ns) / 1e6
+        remaining = _remaining(a)
+        if remaining > 5000 - passed_ms + 1 + bench.port.u_ms:
+            raise Failed(f"{remaining} ms are told to remain of 5000 after {passed_ms:.1f}", clause="LSE-14")
+    if remaining < 5000 - 300 - 6 * bench.facts.receipt_ms - 100 - 10 * bench.port.u_ms:
+        raise Failed(f"only {remaining} ms are told to remain after some 300 of 5000", clause="LSE-14")
+
+
+@case(
     "LSE.held", "inopportune", "A held lease is granted to nobody, the holder included.", clauses=["LSE-02"]
 )
 def test_held(bench: Bench) -> None:
@@ -174,6 +193,30 @@ def test_expiry(bench: Bench) -> None:
     if status["activity"] != bench.facts.settles_for("lease_end"):
         raise Failed("the end of the lease must take the power as declared", clause="LSE-10")
     a.refused("not-holder", "energize", clause="LSE-03")
+
+
+@case(
+    "LSE.last-byte",
+    "valid",
+    "A duration counts from the last byte of a renewal that comes in two pieces.",
+    clauses=["LSE-15", "LSE-06"],
+    needs="gaps",
+)
+def test_last_byte(bench: Bench) -> None:
+    a = bench.a
+    a.take_lease(1000)
+    frame = a.frame("renew-lease", duration=4000)
+    renewal = a.sent(frame, bench.send_in_pieces(frame, PIECES_APART_MS))
+    a.expect_accepted(renewal, "LSE-06")
+    status = a.status()
+    least_ms = 4000 - (status.time_ns - renewal.time_ns) / 1e6 - bench.port.u_ms - 1
+    if status["lease_remaining"] < least_ms:
+        raise Failed(
+            f"{status['lease_remaining']} ms remain, {least_ms:.0f} of 4000 ms must be left", clause="LSE-15"
+        )
+
+
+PIECES_APART_MS = 120
 
 
 @case(

@@ -130,6 +130,27 @@ def test_many_commands(bench: Bench) -> None:
 
 
 @case(
+    "LOD.long-run",
+    "valid",
+    "After a long series of requests answers are as quick as before.",
+    clauses=["LOD-02", "ACK-03"],
+)
+def test_long_run(bench: Bench) -> None:
+    a = bench.a
+    a.take_lease(30_000)
+    late = 0
+    for place in range(1200 if bench.facts.has("virtual") else 240):
+        sent = a.send("renew-lease", duration=30_000) if place % 4 == 0 else a.send("status")
+        delay_ms = (a.answered(sent, "LOD-02").time_ns - sent.time_ns) / 1e6
+        late = late + 1 if delay_ms > bench.facts.receipt_ms + bench.port.u_ms else 0
+        if late > (0 if bench.facts.has("virtual") else LATE_IN_A_ROW):
+            raise Failed(f"after {place} requests an answer took {delay_ms:.1f} ms", clause="ACK-03")
+
+
+LATE_IN_A_ROW = 15
+
+
+@case(
     "LOD.queries-of-many",
     "valid",
     "Requests to many in quick succession from several sessions are bounded and answered.",

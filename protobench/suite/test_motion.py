@@ -46,6 +46,24 @@ def test_each_motion(bench: Bench) -> None:
                 )
 
 
+@case(
+    "MOT.magnitudes",
+    "valid",
+    "Magnitudes at the ends of each width of integer are taken at their value, with their sign.",
+    clauses=["BDY-14", "MOT-04"],
+    needs="travel",
+)
+def test_magnitudes(bench: Bench) -> None:
+    a = bench.a
+    a.make_ready(20_000)
+    facts = bench.facts.travel()
+    for magnitude in (-33, -128, -129, -32_768, -32_769, 128, 255, 256, 65_535, 65_536):
+        if facts.magnitude_min <= magnitude <= facts.magnitude_max:
+            outcome = a.ended(a.move(facts.name, magnitude=magnitude), "done", "none", "MOT-04")
+            if abs(outcome["displacement"] - magnitude) > max(1, SHARE * abs(magnitude)):
+                raise Failed(f"{magnitude} was asked for, {outcome['displacement']} made", clause="BDY-14")
+
+
 def _check_duration(bench: Bench, facts: MotionFacts, move: Sent, outcome: Received) -> None:
     took_ms = (outcome.time_ns - move.time_ns) / 1e6
     limit_ms = facts.longest_ms + 2 * bench.facts.receipt_ms + bench.port.u_ms
@@ -188,7 +206,7 @@ def test_begun_once(bench: Bench) -> None:
     "MOT.queue-full",
     "inopportune",
     "The declared number of motions can wait; one more is refused busy and never made.",
-    clauses=["MOT-07"],
+    clauses=["MOT-07", "ACK-06"],
     needs="queue and travel and stoppable",
 )
 def test_queue_full(bench: Bench) -> None:
@@ -200,12 +218,15 @@ def test_queue_full(bench: Bench) -> None:
     if bench.facts.has("assist"):
         a.hold("running")
     moves = [a.move(bench.facts.stoppable().name) for _ in range(room + 1)]
+    waiting = a.status()["queued"]
     for _ in range(2):
         receipt = a.answered(a.send("move", **a.move_fields()))
         if receipt.get("reason") == "outcomes-full" and room + 1 == bench.facts.description["outcomes"]:
             break
         if receipt.get("reason") != "busy":
             raise Failed(f"a move with the queue full was {answer_words(receipt)}", clause="MOT-07")
+        if bench.facts.has("assist") and a.status()["queued"] != waiting:
+            raise Failed("a refused move changed the queue", clause="ACK-06")
     a.accepted("cancel", clause="MOT-08")
     for move in moves:
         a.ended(move, "cancelled", "cancel", "MOT-08")
@@ -331,7 +352,7 @@ def test_cancel_all(bench: Bench) -> None:
     "MOT.cancel-unknown",
     "invalid",
     "cancel of what is not there is refused; of everything, accepted.",
-    clauses=["MOT-09", "MOT-20"],
+    clauses=["MOT-09", "MOT-20", "MOT-08"],
 )
 def test_cancel_unknown(bench: Bench) -> None:
     a = bench.a
@@ -340,7 +361,8 @@ def test_cancel_unknown(bench: Bench) -> None:
     a.accepted("cancel", clause="MOT-09")
     if bench.facts.has("travel"):
         move = a.move()
-        a.ended(move, "done", "none", "MOT-04")
+        a.refused("no-such-motion", "cancel", target=(move.number - 1) % MODULUS, clause="MOT-20")
+        a.ended(move, "done", "none", "MOT-20")
         a.refused("no-such-motion", "cancel", target=move.number, clause="MOT-09")
 
 
@@ -618,7 +640,7 @@ def _bonded(tester: Tester) -> list[int]:
     "MOT.last-bond",
     "invalid",
     "The only closed bond is opened only with leave; it can be closed again.",
-    clauses=["MOT-17", "MOT-18"],
+    clauses=["MOT-17", "MOT-18", "BDY-12"],
     needs="bonds",
 )
 def test_last_bond(bench: Bench) -> None:
@@ -638,6 +660,36 @@ def test_last_bond(bench: Bench) -> None:
     closed = a.ended(a.move("bond", face=face), "done", "none", "MOT-18")
     if _bonded(a) != [face] or closed["displacement"]:
         raise Failed("after bond the face must be bonded, displacement 0", clause="MOT-18")
+
+
+@case(
+    "MOT.last-bond-queued",
+    "inopportune",
+    "An unbond whose face has become the last by the time it would begin ends failed, never begun.",
+    clauses=["MOT-17"],
+    needs="bonds and queue",
+)
+def test_last_bond_queued(bench: Bench) -> None:
+    a = bench.a
+    a.make_ready(20_000)
+    bonded = _bonded(a)
+    added = None if len(bonded) != 1 else _close_another(bench, bonded[0])
+    if added is None:
+        raise NotApplicable("not one bond is closed, or no other face has a neighbour")
+    first, second = (a.move("unbond", face=face) for face in (added, bonded[0]))
+    a.ended(first, "done", "none", "MOT-18")
+    never = a.ended(second, "failed", "last-bond", "MOT-17")
+    if never["displacement"] or never["duration_ms"] or _bonded(a) != bonded:
+        raise Failed("an unbond of what had become the last bond was begun", clause="MOT-17")
+
+
+def _close_another(bench: Bench, bonded: int) -> int | None:
+    """Close the bond of another face that has a neighbour; its place, or None where there is none."""
+    for place, face in enumerate(bench.a.status()["faces"]):
+        if place != bonded and face.neighbour:
+            bench.a.ended(bench.a.move("bond", face=place), "done", "none", "MOT-18")
+            return place
+    return None
 
 
 @case(

@@ -80,6 +80,27 @@ def test_copied_move(bench: Bench) -> None:
 
 
 @case(
+    "SEQ.copied-late",
+    "inopportune",
+    "A copy after long silence, and after the lease, gets the same receipt and is not executed.",
+    clauses=["SEQ-03"],
+    needs="virtual",
+)
+def test_copied_late(bench: Bench) -> None:
+    a = bench.a
+    a.take_lease(30_000)
+    a.reset()
+    energize = a.send("energize")
+    receipt = a.expect_accepted(energize, "STA-09")
+    a.accepted("de-energize", clause="STA-10")
+    for silence_ms in (29_000, 90_000, 3_600_000):
+        bench.port.wait_ms(silence_ms)
+        _same_receipt(a, energize, receipt)
+        if a.status()["activity"] != "idle":
+            raise Failed(f"a copy was executed again after {silence_ms} ms", clause="SEQ-03")
+
+
+@case(
     "SEQ.copied-refusal",
     "valid",
     "A refused command is consumed and its copy gets the same refusal, though it would be accepted now.",
@@ -92,9 +113,14 @@ def test_copied_refusal(bench: Bench) -> None:
     receipt = a.expect_refused(refused, "halted", "STA-11")
     malformed = a.send("energize", body=b"\xc1")
     second = a.expect_refused(malformed, "malformed", "BDY-01")
+    older = a.send("reset", halt_count=a.status()["halt_count"] - 1)
+    third = a.expect_refused(older, "newer-halt", "HLT-12")
+    a.answered(a.send("halt"))
+    _same_receipt(a, older, third)
     a.reset()
     _same_receipt(a, refused, receipt)
     _same_receipt(a, malformed, second)
+    _same_receipt(a, older, third)
     if a.status()["activity"] != "idle":
         raise Failed("the copy of a refused energize was executed", clause="SEQ-03")
 
@@ -113,6 +139,7 @@ def test_conflict(bench: Bench) -> None:
     number = sent.number
     others = [
         a.frame("renew-lease", number=number, duration=9001),
+        a.frame("take-lease", number=number, duration=9000),
         a.frame("release-lease", number=number),
         a.frame("renew-lease", number=number, duration=9000, flags=1),
         a.frame("energize", number=number, body=b"\xc1"),
@@ -177,8 +204,7 @@ def test_expired(bench: Bench) -> None:
     a.take_lease()
     numbers = bench.facts.description["numbers"]
     sent = [a.accepted("renew-lease", duration=9000, clause="LSE-06") for _ in range(numbers + 3)]
-    kept = sent[-8:]
-    for copy in kept:
+    for copy in sent[-numbers:]:
         a.expect_accepted(a.send_frame(copy.frame_bytes), "SEQ-09")
     top = sent[-1].number
     if numbers + 3 <= 31:

@@ -161,7 +161,7 @@ def _judge_states(bench: Bench, states: list[State]) -> None:
     "STA.table-idle",
     "valid",
     "Every request in every state at rest without power has the table's answer and next state.",
-    clauses=["STA-01", "STA-02", "STA-11"],
+    clauses=["STA-01", "STA-02", "STA-11", "HLT-04"],
     needs="travel",
 )
 def test_table_idle(bench: Bench) -> None:
@@ -275,6 +275,8 @@ def test_start(bench: Bench) -> None:
     if wrong:
         raise Failed(f"after a restart the status says {wrong}", clause="STA-03")
     bench.port.wait_ms(200)
+    a.take_lease()
+    a.accepted("release-lease", clause="LSE-11")
     if bench.port.take_all(lambda received: received.kind == "started"):
         raise Failed("started was sent more than once", clause="STA-08")
 
@@ -351,6 +353,8 @@ def test_restart_in_motion(bench: Bench) -> None:
     a = bench.a
     a.make_ready()
     faces = [face.bonded for face in a.status()["faces"]]
+    ended = a.move()
+    a.outcome(ended)  # not confirmed
     move = a.move()
     queued = a.move() if bench.facts.has("queue") else None
     bench.port.wait_ms(min(20, bench.facts.travel().typical_ms / 4))
@@ -362,7 +366,9 @@ def test_restart_in_motion(bench: Bench) -> None:
         raise Failed(f"after a restart in motion the truth is {truth.fields}", clause="STA-05")
     if [face.bonded for face in a.status()["faces"]] != faces:
         raise Failed("a restart changed a bond", clause="STA-05")
-    for sent in (move, queued):
+    if a.status()["unconfirmed"]:
+        raise Failed("after a restart an outcome of before it waits for its confirm", clause="ACK-17")
+    for sent in (ended, move, queued):
         late = None if sent is None else a.outcome_or_none(sent, 0)
         if late is not None and late.time_ns > restarted_ns:
             raise Failed("an outcome of before the restart was sent after it", clause="ACK-17")
@@ -372,23 +378,30 @@ def test_restart_in_motion(bench: Bench) -> None:
     "STA.energize",
     "valid",
     "energize puts power on and moves nothing; again it changes nothing.",
-    clauses=["STA-09"],
+    clauses=["STA-09", "STA-10"],
 )
 def test_energize(bench: Bench) -> None:
     a = bench.a
-    a.make_ready()
+    a.take_lease()
+    a.reset()
+    starts = a.truth()["motion_starts"] if bench.facts.has("assist") else 0
+    before = a.status()
+    a.accepted("energize", clause="STA-09")
+    bench.port.wait_ms(50)
     first = a.status()
+    if first["activity"] != "energized" or first["position"] != before["position"]:
+        raise Failed("energize must put power on and move nothing", clause="STA-09")
     a.accepted("energize", clause="STA-09")
     bench.port.wait_ms(50)
     second = a.status()
-    if (
-        first["activity"] != "energized"
-        or second["change"] != first["change"]
-        or second["position"] != first["position"]
-    ):
+    if second["change"] != first["change"] or second["position"] != first["position"]:
         raise Failed("energize while energized must change nothing", clause="STA-09")
-    if bench.facts.has("assist") and not a.truth()["energized"]:
-        raise Failed("after energize the actuators have no power", clause="STA-09")
+    if bench.facts.has("assist"):
+        truth = a.truth()
+        if not truth["energized"]:
+            raise Failed("after energize the actuators have no power", clause="STA-09")
+        if truth["motion_starts"] != starts or truth["position"] != before["position"]:
+            raise Failed("by the truth log energize moved something", clause="STA-09")
     a.accepted("de-energize", clause="STA-10")
     a.accepted("de-energize", clause="STA-10")
     if bench.facts.has("assist") and a.truth()["energized"]:

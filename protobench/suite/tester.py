@@ -131,7 +131,8 @@ class Tester:
     def answered(self, sent: Sent, clause: str = "ACK-01") -> Received:
         """The answer to ``sent``; when it is missing the identical bytes are sent once more to tell a lost frame.
 
-        Raises Failed when nothing answers at all, Inconclusive when only the copy was answered.
+        Raises Failed when nothing answers at all, Inconclusive when only the copy was answered on a link that can lose
+        a frame, Failed on one that cannot.
         """
         received = self.answer(sent)
         if received is not None:
@@ -139,9 +140,10 @@ class Tester:
         again = self.send_frame(sent.frame_bytes)
         if self.answer(again) is None:
             raise Failed(f"no answer to {sent.kind} #{sent.number}, sent twice", clause=clause)
-        raise Inconclusive(
-            f"{sent.kind} #{sent.number} was answered only when sent again: a frame may have been lost"
-        )
+        words = f"{sent.kind} #{sent.number} was answered only when sent again"
+        if self.port.is_lossless:
+            raise Failed(f"{words}, on a link that loses nothing", clause=clause)
+        raise Inconclusive(f"{words}: a frame may have been lost")
 
     def ask(self, kind: str | int, **options: Any) -> Received:
         """Send a request and return its answer."""

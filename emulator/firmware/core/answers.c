@@ -26,12 +26,36 @@ bool pb_answers_have_room(const struct pb_module *module)
     return module->answers.count < PB_MAX_ANSWERS;
 }
 
+/* By how much some broken variants answer late. */
+static uint64_t delay_us(const struct pb_module *module)
+{
+    if (PB_VARIANT(late_beside_others) && module->drops[PB_DROP_OTHER_ADDRESS - 1] > 0)
+        return 30000;
+    if (PB_VARIANT(answers_slow_down))
+        return 20u * (uint64_t)module->answers.queued;
+    if (PB_VARIANT(telemetry_delays_answers) && module->telemetry.active)
+        return module->telemetry.next_us - module->now_us;
+    for (unsigned i = 0; PB_VARIANT(unicast_behind_many) && i < PB_MAX_SESSIONS; i++)
+        if (module->answers.many[i].waiting)
+            return module->answers.many[i].answer.due_us - module->now_us;
+    return 0;
+}
+
 uint32_t pb_answers_queue(struct pb_module *module, const struct pb_answer *answer)
 {
     struct pb_answers *answers = &module->answers;
     struct pb_answer *place = &answers->unicast[(answers->first + answers->count) % PB_MAX_ANSWERS];
     *place = *answer;
-    place->due_us = module->now_us + module->config->receipt_delay_us;
+    place->due_us = module->now_us + module->config->receipt_delay_us + delay_us(module);
+    if (PB_VARIANT(answers_go_to_the_latest))
+        for (unsigned i = 0; i < PB_MAX_ANSWERS; i++)
+            answers->unicast[i].destination = answer->destination;
+    if (PB_VARIANT(reads_overtake_receipts) && answers->count > 0 && answer->kind != PB_KIND_RECEIPT) {
+        struct pb_answer *before = &answers->unicast[(answers->first + answers->count - 1u) % PB_MAX_ANSWERS];
+        const struct pb_answer read = *place;
+        *place = *before;
+        *before = read;
+    }
     answers->count++;
     return ++answers->queued;
 }
@@ -44,6 +68,8 @@ void pb_answers_queue_halt(struct pb_module *module, const struct pb_answer *ans
     struct pb_answer *place = &answers->halts[answers->halt_count++];
     *place = *answer;
     place->due_us = module->now_us + module->config->turnaround_us;
+    if (PB_VARIANT(halt_late_after_flood) && module->drops[PB_DROP_OTHER_ADDRESS - 1] > 100)
+        place->due_us += 30000;
 }
 
 /* The place of the answer that waits for this session, else a free one, else null. */
@@ -68,11 +94,19 @@ bool pb_answers_have_room_for_many(const struct pb_module *module, const struct 
 void pb_answers_queue_many(struct pb_module *module, const struct pb_answer *answer, uint32_t window_ms)
 {
     const struct pb_many_answer *found = many_place(module, answer->destination, answer->session);
-    if (found == NULL)
+    if (found == NULL || (PB_VARIANT(first_to_many_stays) && found->waiting))
+        return;
+    if (PB_VARIANT(no_window_leaves_waiting) && window_ms == 0)
         return;
     struct pb_many_answer *place = &module->answers.many[found - module->answers.many];
     place->waiting = window_ms > 0;
     place->answer = *answer;
+    if (PB_VARIANT(window_answered_at_once))
+        window_ms = 1;
+    if (PB_VARIANT(window_used_to_two_thirds))
+        window_ms = window_ms * 2u / 3u;
+    if (PB_VARIANT(answer_to_many_from_broadcast) && answer->kind == PB_KIND_RECEIPT)
+        place->answer.source = PB_ADDRESS_BROADCAST;
     if (PB_VARIANT(window_not_spread))
         place->answer.due_us = module->now_us + 1000u * (uint64_t)window_ms;
     else
@@ -126,6 +160,9 @@ void pb_answers_send_many(struct pb_module *module)
 {
     for (unsigned i = 0; i < PB_MAX_SESSIONS; i++) {
         struct pb_many_answer *place = &module->answers.many[i];
+        const bool is_halt = place->waiting && place->answer.kind == PB_KIND_HALT_RECEIPT;
+        if (PB_VARIANT(halt_to_many_delayed) && is_halt && place->answer.due_us <= module->now_us)
+            place->answer.first = pb_state_halt(module, PB_HALT_CAUSE_REQUEST);
         if (place->waiting && place->answer.due_us <= module->now_us && pb_encode_answer(module, &place->answer))
             place->waiting = false;
     }

@@ -69,6 +69,9 @@ static uint8_t preset(struct pb_module *module, int64_t item, uint32_t value)
 {
     switch (item) {
     case PB_PRESET_ITEM_CLOCK:
+        if (PB_VARIANT(start_follows_clock))
+            for (unsigned i = 0; i < module->config->outcomes; i++)
+                module->slots.slots[i].start_us -= value - pb_state_clock(module, module->now_us);
         module->state.clock_offset_us = 0;
         module->state.clock_offset_us = value - pb_state_clock(module, module->now_us);
         return 0;
@@ -81,7 +84,8 @@ static uint8_t preset(struct pb_module *module, int64_t item, uint32_t value)
         module->state.change = value;
         return 0;
     case PB_PRESET_ITEM_LEASE:
-        module->lease.number = value;
+        if (!PB_VARIANT(lease_preset_ignored))
+            module->lease.number = value;
         return 0;
     case PB_PRESET_ITEM_EVENT:
         module->event_number = value;
@@ -121,5 +125,7 @@ uint8_t pb_assist_execute(struct pb_module *module, const struct pb_request *req
 
 bool pb_assist_restart_is_due(const struct pb_module *module)
 {
+    if (PB_VARIANT(restart_before_receipt))
+        return module->assist.restart_asked;
     return module->assist.restart_asked && pb_answers_have_left(module, module->assist.restart_after);
 }

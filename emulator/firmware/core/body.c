@@ -1,6 +1,7 @@
 #include "body.h"
 
 #include "bytes.h"
+#include "variant.h"
 
 /* First bytes of MessagePack values (the format's own published table). */
 enum {
@@ -38,7 +39,9 @@ static struct pb_value read_unsigned(const uint8_t *at, size_t left)
         return NOT_A_VALUE;
     const uint64_t number = pb_get(at + 1, width);
     const uint64_t shorter_last = width == 1 ? POSITIVE_FIXINT_LAST : ((uint64_t)1 << (4u * width)) - 1u;
-    if (number <= shorter_last)
+    if (PB_VARIANT(integer_read_as_signed) && width == 4 && number > INT32_MAX)
+        return value_of(PB_TYPE_INTEGER, (int64_t)number - ((int64_t)1 << 32), 0, 1u + width);
+    if (number <= shorter_last && !PB_VARIANT(long_integers_taken))
         return NOT_A_VALUE;
     return value_of(PB_TYPE_INTEGER, number > INT64_MAX ? INT64_MAX : (int64_t)number, 0, 1u + width);
 }
@@ -60,6 +63,8 @@ static struct pb_value read_signed(const uint8_t *at, size_t left)
     if (left < 1u + width)
         return NOT_A_VALUE;
     const int64_t number = sign_extended(pb_get(at + 1, width), width);
+    if (PB_VARIANT(short_negative_loses_sign) && width == 2)
+        return value_of(PB_TYPE_INTEGER, (int64_t)pb_get(at + 1, width), 0, 1u + width);
     const int64_t shorter_first = width == 1 ? -32 : -((int64_t)1 << (4u * width - 1u));
     if (number >= shorter_first)
         return NOT_A_VALUE;
@@ -70,7 +75,7 @@ static struct pb_value read_text(const uint8_t *at, size_t left, size_t size, si
 {
     if (size > PB_BODY_STRING_SIZE_MAX || size > left - header_size)
         return NOT_A_VALUE;
-    for (size_t i = 0; i < size; i++)
+    for (size_t i = 0; i < size && !PB_VARIANT(text_not_checked); i++)
         if (at[header_size + i] < 0x20 || at[header_size + i] > 0x7E)
             return NOT_A_VALUE;
     return value_of(PB_TYPE_TEXT, 0, (unsigned)size, (unsigned)header_size);
@@ -78,7 +83,8 @@ static struct pb_value read_text(const uint8_t *at, size_t left, size_t size, si
 
 static struct pb_value read_bytes(size_t left, size_t size, size_t header_size)
 {
-    if (size > PB_BODY_BINARY_SIZE_MAX || size > left - header_size)
+    const bool is_there = size <= left - header_size || PB_VARIANT(claimed_size_trusted);
+    if (size > PB_BODY_BINARY_SIZE_MAX || !is_there)
         return NOT_A_VALUE;
     return value_of(PB_TYPE_BYTES, 0, (unsigned)size, (unsigned)header_size);
 }
@@ -125,6 +131,10 @@ static struct pb_value read_value(const uint8_t *at, size_t left)
         return read_container(PB_TYPE_LIST, left, first - FIXARRAY, 1);
     if (first <= FIXSTR_LAST)
         return read_text(at, left, first - FIXSTR, 1);
+    if (PB_VARIANT(nil_taken) && first == 0xC0)
+        return value_of(PB_TYPE_BOOL, 0, 0, 1);
+    if (PB_VARIANT(float_taken_for_its_bits) && first == 0xCA && left >= 5)
+        return value_of(PB_TYPE_INTEGER, (int64_t)pb_get(at + 1, 4), 0, 5);
     if (first == FALSE_BYTE || first == TRUE_BYTE)
         return value_of(PB_TYPE_BOOL, first == TRUE_BYTE, 0, 1);
     if (first >= UINT8 && first <= UINT64)
@@ -146,7 +156,9 @@ struct level {
 /* Takes the key of a map's next pair; false when it is no such key. */
 static bool take_key(struct level *level, const uint8_t *bytes, size_t size, size_t *at)
 {
-    if (*at >= size || bytes[*at] > PB_BODY_KEY_LAST || bytes[*at] <= level->last_key)
+    if (*at >= size || bytes[*at] > PB_BODY_KEY_LAST)
+        return false;
+    if (bytes[*at] <= level->last_key && !(PB_VARIANT(duplicate_keys_taken) && bytes[*at] == level->last_key))
         return false;
     level->last_key = bytes[*at];
     *at += 1;
@@ -161,6 +173,8 @@ bool pb_body_read(struct pb_body *body, const uint8_t *bytes, size_t size)
     body->bytes = bytes;
     body->size = (uint8_t)size;
     body->pairs = 0;
+    if (PB_VARIANT(no_bytes_taken_for_empty_map) && size == 0)
+        return true;
     if (size > PB_BODY_SIZE_MAX)
         return false;
     for (;;) {
@@ -179,7 +193,7 @@ bool pb_body_read(struct pb_body *body, const uint8_t *bytes, size_t size)
         if (depth > 0)
             levels[depth - 1].left--;
         if (value.type == PB_TYPE_MAP || value.type == PB_TYPE_LIST) {
-            if (depth == PB_BODY_DEPTH_MAX)
+            if (depth == PB_BODY_DEPTH_MAX && !PB_VARIANT(depth_not_bounded))
                 return false;
             levels[depth].left = value.size;
             levels[depth].is_map = value.type == PB_TYPE_MAP;
@@ -191,7 +205,7 @@ bool pb_body_read(struct pb_body *body, const uint8_t *bytes, size_t size)
         while (depth > 0 && levels[depth - 1].left == 0)
             depth--;
         if (depth == 0)
-            return at == size;
+            return at == size || PB_VARIANT(trailing_bytes_taken) || (PB_VARIANT(claimed_size_trusted) && at > size);
     }
 }
 
@@ -224,7 +238,9 @@ uint8_t pb_body_unknown_critical(const struct pb_body *body, const uint8_t *know
         bool is_known = key < PB_BODY_CRITICAL_FIRST || key >= PB_BODY_PRIVATE_FIRST;
         for (size_t k = 0; k < known_count && !is_known; k++)
             is_known = known[k] == key;
-        if (!is_known)
+        if (PB_VARIANT(unknown_key_refused) && key > 8 && key < PB_BODY_CRITICAL_FIRST)
+            return key;
+        if (!is_known && !PB_VARIANT(critical_key_ignored))
             return key;
     }
     return 0;

@@ -1,5 +1,7 @@
 #include "cobs.h"
 
+#include "variant.h"
+
 /* In a block of up to 254 bytes a code byte of 0xFF always runs past the end, and without that code every encoding
  * is the only one of what it decodes to. So running past the end is the one way not to be canonical. */
 bool pb_cobs_decode(uint8_t *block, size_t size, size_t *decoded_size)
@@ -7,7 +9,9 @@ bool pb_cobs_decode(uint8_t *block, size_t size, size_t *decoded_size)
     size_t read = 0;
     size_t written = 0;
     while (read < size) {
-        const size_t code = block[read];
+        size_t code = block[read];
+        if (PB_VARIANT(stuffing_overrun_taken) && code > size - read)
+            code = size - read;
         if (code == 0 || code > size - read)
             return false;
         for (size_t i = 1; i < code; i++)

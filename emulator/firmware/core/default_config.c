@@ -1,5 +1,6 @@
 #include "bytes.h"
 #include "config.h"
+#include "variant.h"
 
 #ifndef PB_BUILD_ID
 #define PB_BUILD_ID 0
@@ -42,8 +43,16 @@ static void set_profile(struct pb_config *config)
     config->capabilities = BIT(PB_CAPABILITY_QUEUE) | BIT(PB_CAPABILITY_SCHEDULE) | BIT(PB_CAPABILITY_TELEMETRY) |
                            BIT(PB_CAPABILITY_GROUPS) | BIT(PB_CAPABILITY_IDENTIFY) | BIT(PB_CAPABILITY_ASSIST) |
                            BIT(PB_CAPABILITY_ENERGY);
+    if (PB_VARIANT(identify_without_saying))
+        config->capabilities &= ~BIT(PB_CAPABILITY_IDENTIFY);
+    if (PB_VARIANT(assist_left_in))
+        config->capabilities &= ~BIT(PB_CAPABILITY_ASSIST);
+    if (PB_VARIANT(start_at_overlooked))
+        config->capabilities &= ~BIT(PB_CAPABILITY_SCHEDULE);
+    if (PB_VARIANT(halt_keeps_power) || PB_VARIANT(fault_keeps_power) || PB_VARIANT(lease_end_takes_no_power))
+        config->motion_count = 2; /* no axis that holds */
     config->queue = 4;
-    config->scheduled = 1;
+    config->scheduled = PB_VARIANT(start_at_overlooked) ? 0 : 1;
     config->groups = PB_MAX_GROUPS;
     config->face_count = sizeof FACES / sizeof FACES[0];
     config->faces = FACES;

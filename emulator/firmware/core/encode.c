@@ -1,5 +1,6 @@
 #include "encode.h"
 
+#include "bytes.h"
 #include "module.h"
 #include "send.h"
 
@@ -26,7 +27,9 @@ void pb_encode_temperatures(const struct pb_module *module, struct pb_writer *bo
 /* Items of page `page`: where it begins, and how many are on it. */
 static unsigned page_begin(uint32_t page, unsigned page_size, unsigned total, unsigned *count)
 {
-    const unsigned begin = (unsigned)page * page_size;
+    unsigned begin = (unsigned)page * page_size;
+    if (PB_VARIANT(page_past_end_is_last) && total > 0 && begin >= total)
+        begin = (total - 1u) / page_size * page_size;
     *count = begin >= total ? 0 : total - begin;
     if (*count > page_size)
         *count = page_size;
@@ -93,6 +96,7 @@ static void write_description(struct pb_module *module, const struct pb_answer *
     pb_write_bytes_field(body, PB_KEY_DESCRIPTION_BUILD, config->build, PB_BUILD_SIZE);
     write_majors(body, PB_KEY_DESCRIPTION_MAJORS);
     pb_write_field(body, PB_KEY_DESCRIPTION_MINOR, PB_MINOR);
+    const bool is_changed = PB_VARIANT(description_changes_with_start) && module->epoch % 2 == 0;
     pb_write_field(body, PB_KEY_DESCRIPTION_NATURE, config->nature);
     pb_write_field(body, PB_KEY_DESCRIPTION_CAPABILITIES, config->capabilities);
     pb_write_field(body, PB_KEY_DESCRIPTION_MOTIONS, declared_motions(config));
@@ -107,7 +111,7 @@ static void write_description(struct pb_module *module, const struct pb_answer *
     pb_write_field(body, PB_KEY_DESCRIPTION_GROUPS, config->groups);
     pb_write_field(body, PB_KEY_DESCRIPTION_RECEIPT_MS, config->receipt_ms);
     pb_write_field(body, PB_KEY_DESCRIPTION_STARTING_MS, config->starting_ms);
-    pb_write_field(body, PB_KEY_DESCRIPTION_STOP_MS, config->stop_ms);
+    pb_write_field(body, PB_KEY_DESCRIPTION_STOP_MS, is_changed ? config->stop_ms + 1 : config->stop_ms);
     pb_write_field(body, PB_KEY_DESCRIPTION_TURNAROUND_US, config->turnaround_us);
 }
 
@@ -132,7 +136,8 @@ static void write_status(struct pb_module *module, const struct pb_answer *answe
     pb_write_field(body, PB_KEY_STATUS_REPORT_CHANGE, state->change);
     pb_write_field(body, PB_KEY_STATUS_REPORT_EPOCH, module->epoch);
     pb_write_field(body, PB_KEY_STATUS_REPORT_STATE, pb_state_displayed(module));
-    pb_write_field(body, PB_KEY_STATUS_REPORT_ACTIVITY, state->activity);
+    const bool is_hidden = PB_VARIANT(status_hides_motion) && state->activity == PB_ACTIVITY_MOVING;
+    pb_write_field(body, PB_KEY_STATUS_REPORT_ACTIVITY, is_hidden ? PB_ACTIVITY_ENERGIZED : state->activity);
     pb_write_bool_field(body, PB_KEY_STATUS_REPORT_HALT_LATCH, state->halt_latch);
     pb_write_bool_field(body, PB_KEY_STATUS_REPORT_FAULT_LATCH, state->fault_latch);
     pb_write_field(body, PB_KEY_STATUS_REPORT_HALT_COUNT, state->halt_count);
@@ -149,7 +154,9 @@ static void write_status(struct pb_module *module, const struct pb_answer *answe
     write_faces(module, body);
     pb_write_field(body, PB_KEY_STATUS_REPORT_LATCHED_FAULTS, pb_faults_latched_count(module));
     pb_write_field(body, PB_KEY_STATUS_REPORT_CLOCK, pb_state_clock(module, module->now_us));
-    pb_write_field(body, PB_KEY_STATUS_REPORT_LEASE_REMAINING, pb_lease_remaining_ms(module));
+    const bool is_whole = PB_VARIANT(lease_remaining_is_duration) && lease->held;
+    pb_write_field(body, PB_KEY_STATUS_REPORT_LEASE_REMAINING,
+                   is_whole ? lease->duration_ms : pb_lease_remaining_ms(module));
     pb_write_field(body, PB_KEY_STATUS_REPORT_SUPPLY, module->config->supply_mv);
     pb_write_field(body, PB_KEY_STATUS_REPORT_BATTERY, module->config->battery_permille);
     pb_encode_temperatures(module, body, PB_KEY_STATUS_REPORT_TEMPERATURES);
@@ -173,6 +180,8 @@ static void write_counters(struct pb_module *module, const struct pb_answer *ans
     for (unsigned i = 0; i < PB_DROP_REASONS; i++)
         pb_write_integer(body, module->drops[i]);
     pb_write_field(body, PB_KEY_COUNTERS_SILENT_REFUSALS, module->silent_refusals);
+    if (PB_VARIANT(reading_clears_counters))
+        pb_clear(module->drops, sizeof module->drops);
 }
 
 static void write_fault_page(struct pb_module *module, const struct pb_answer *answer, struct pb_writer *body)
@@ -192,7 +201,8 @@ static void write_fault_page(struct pb_module *module, const struct pb_answer *a
         pb_write_integer(body, pb_fault_class(fault->code));
         pb_write_integer(body, pb_fault_is_latching(fault->code) ? PB_SEVERITY_LATCHING : PB_SEVERITY_NOTICE);
         pb_write_integer(body, fault->count);
-        pb_write_integer(body, fault->clock_us);
+        pb_write_integer(body, PB_VARIANT(fault_time_of_reading) ? pb_state_clock(module, module->now_us)
+                                                                 : fault->clock_us);
         pb_write_integer(body, fault->value);
         pb_write_integer(body, pb_faults_is_standing(module, fault->code));
         pb_write_integer(body, fault->latched);
@@ -227,13 +237,19 @@ static void write_time(struct pb_module *module, const struct pb_answer *answer,
 {
     pb_write_map(body, 3);
     pb_write_field(body, PB_KEY_TIME_ANSWER_T1, answer->first);
-    pb_write_field(body, PB_KEY_TIME_ANSWER_T2, answer->second);
-    pb_write_field(body, PB_KEY_TIME_ANSWER_T3, pb_state_clock(module, module->wall_us));
+    const uint32_t sent = pb_state_clock(module, module->wall_us);
+    const uint32_t arrived = PB_VARIANT(arrival_taken_at_sending) ? sent : answer->second;
+    pb_write_field(body, PB_KEY_TIME_ANSWER_T2, PB_VARIANT(exchange_times_swapped) ? sent : arrived);
+    pb_write_field(body, PB_KEY_TIME_ANSWER_T3, PB_VARIANT(exchange_times_swapped) ? arrived : sent);
+    if (PB_VARIANT(exchange_sets_clock))
+        module->state.clock_offset_us += answer->first - sent;
 }
 
 static void write_motion_description(struct pb_module *module, const struct pb_answer *answer, struct pb_writer *body)
 {
     const struct pb_motion_config *motion = pb_config_motion(module->config, answer->first);
+    if (PB_VARIANT(undeclared_motion_described) && motion == NULL)
+        motion = &module->config->motions[0];
     pb_write_map(body, 10);
     pb_write_field(body, PB_KEY_MOTION_DESCRIPTION_MOTION, motion->motion);
     pb_write_field(body, PB_KEY_MOTION_DESCRIPTION_ACTUATOR, motion->actuator);
@@ -269,7 +285,8 @@ static void write_truth_page(struct pb_module *module, const struct pb_answer *a
     pb_write_field(body, PB_KEY_TRUTH_PAGE_TOTAL, module->truth.count);
     pb_write_list_field(body, PB_KEY_TRUTH_PAGE_ENTRIES, count);
     for (unsigned i = 0; i < count; i++) {
-        const struct pb_truth_entry *entry = pb_truth_entry(module, begin + i);
+        const unsigned age = PB_VARIANT(truth_oldest_first) ? module->truth.count - 1u - begin - i : begin + i;
+        const struct pb_truth_entry *entry = pb_truth_entry(module, age);
         pb_write_list(body, 3);
         pb_write_integer(body, entry->clock_us);
         pb_write_integer(body, entry->event);

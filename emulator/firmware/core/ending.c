@@ -6,6 +6,8 @@
 /* Halt prevails over fault, fault over lease end, lease end over cancel, cancel over the rest. */
 static unsigned strength(uint8_t cause)
 {
+    if (PB_VARIANT(first_cause_stays))
+        return cause != PB_CAUSE_NONE;
     switch (cause) {
     case PB_CAUSE_HALT:
         return 4;
@@ -23,7 +25,7 @@ static unsigned strength(uint8_t cause)
 static uint8_t outcome_of(uint8_t cause, bool has_begun)
 {
     if (cause == PB_CAUSE_HALT)
-        return PB_OUTCOME_HALTED;
+        return PB_VARIANT(halted_said_cancelled) ? PB_OUTCOME_CANCELLED : PB_OUTCOME_HALTED;
     return cause == PB_CAUSE_FAULT && has_begun ? PB_OUTCOME_FAILED : PB_OUTCOME_CANCELLED;
 }
 
@@ -66,7 +68,11 @@ static void stop_running(struct pb_module *module, uint8_t cause)
     struct pb_slot *slot = motion->running;
     if (slot == NULL || (PB_VARIANT(halt_lets_motion_end) && cause == PB_CAUSE_HALT))
         return;
-    if (motion->committed) { /* it can only land */
+    if (PB_VARIANT(fault_does_not_stop) && cause == PB_CAUSE_FAULT)
+        return;
+    if (motion->committed && !PB_VARIANT(committed_motion_stopped)) { /* it can only land */
+        if (PB_VARIANT(interruption_not_noted))
+            return;
         if (strength(cause) > strength(slot->interrupted))
             slot->interrupted = cause;
         return;
@@ -74,7 +80,7 @@ static void stop_running(struct pb_module *module, uint8_t cause)
     if (!motion->stopping) {
         motion->stopping = true;
         motion->held = false;
-        motion->next_us = module->now_us + module->config->stop_delay_us;
+        motion->next_us = module->now_us + module->config->stop_delay_us * (PB_VARIANT(stop_takes_long) ? 6u : 1u);
         pb_plant_freeze(&module->plant, module->now_us);
     }
     if (strength(cause) > strength(slot->cause)) {
@@ -86,6 +92,10 @@ static void stop_running(struct pb_module *module, uint8_t cause)
 void pb_ending_stop_all(struct pb_module *module, uint8_t cause)
 {
     stop_running(module, cause);
+    if (PB_VARIANT(cancel_leaves_queue) && cause == PB_CAUSE_CANCEL)
+        return;
+    if (PB_VARIANT(queue_runs_though_halted) && cause == PB_CAUSE_HALT)
+        return;
     if (!PB_VARIANT(halt_keeps_queue) || cause != PB_CAUSE_HALT)
         pb_ending_all_waiting(module, PB_SLOT_QUEUED, cause);
     pb_ending_all_waiting(module, PB_SLOT_SCHEDULED, cause);

@@ -10,11 +10,15 @@ bool pb_encode_outcome(struct pb_module *module, const struct pb_slot *slot)
     const bool has_energy = pb_config_has(module->config, PB_CAPABILITY_ENERGY);
     const bool was_interrupted = slot->interrupted != PB_CAUSE_NONE;
     pb_outgoing_begin(&outgoing, PB_KIND_OUTCOME, module->address);
-    pb_outgoing_to(&outgoing, slot->source, slot->session, slot->number);
+    if (PB_VARIANT(outcome_goes_to_holder) && module->lease.held)
+        pb_outgoing_to(&outgoing, module->lease.source, module->lease.session, slot->number);
+    else
+        pb_outgoing_to(&outgoing, slot->source, slot->session, slot->number);
     pb_write_map(body, 8u + has_energy + was_interrupted);
     pb_write_field(body, PB_KEY_OUTCOME_EVENT, slot->event);
     pb_write_field(body, PB_KEY_OUTCOME_EPOCH, module->epoch);
-    pb_write_field(body, PB_KEY_OUTCOME_CHANGE, slot->change);
+    pb_write_field(body, PB_KEY_OUTCOME_CHANGE,
+                   PB_VARIANT(outcome_tells_change_of_now) ? module->state.change : slot->change);
     pb_write_field(body, PB_KEY_OUTCOME_MOTION, slot->motion);
     pb_write_field(body, PB_KEY_OUTCOME_OUTCOME, slot->outcome);
     pb_write_field(body, PB_KEY_OUTCOME_CAUSE, slot->cause);
@@ -33,12 +37,13 @@ bool pb_encode_fault(struct pb_module *module, const struct pb_fault *fault)
     struct pb_outgoing outgoing;
     struct pb_writer *body = &outgoing.body;
     pb_outgoing_begin(&outgoing, PB_KIND_FAULT, module->address);
-    if (module->lease.held)
+    if (module->lease.held && !PB_VARIANT(fault_told_to_nobody))
         pb_outgoing_to(&outgoing, module->lease.source, module->lease.session, 0);
     else
         pb_outgoing_to(&outgoing, PB_ADDRESS_ANY_CONTROLLER, 0, 0);
     pb_write_map(body, 10);
-    pb_write_field(body, PB_KEY_FAULT_EVENT, fault->event);
+    const uint32_t ahead = PB_VARIANT(fault_repeats_renumbered) ? fault->sendings : 0;
+    pb_write_field(body, PB_KEY_FAULT_EVENT, fault->event + ahead);
     pb_write_field(body, PB_KEY_FAULT_EPOCH, module->epoch);
     pb_write_field(body, PB_KEY_FAULT_CHANGE, fault->change);
     pb_write_field(body, PB_KEY_FAULT_OCCURRENCE, fault->occurrence);

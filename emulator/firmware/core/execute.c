@@ -35,7 +35,8 @@ static uint8_t assign_address(struct pb_module *module, const struct pb_request 
 static uint8_t set_groups(struct pb_module *module, const struct pb_request *request)
 {
     struct pb_settings settings = module->storage.kept;
-    settings.group_count = (uint8_t)pb_range_groups(request, settings.groups, PB_MAX_GROUPS);
+    const unsigned capacity = PB_VARIANT(groups_not_counted) ? UINT8_MAX : PB_MAX_GROUPS;
+    settings.group_count = (uint8_t)pb_range_groups(request, settings.groups, capacity);
     return commit(module, &settings);
 }
 
@@ -44,11 +45,16 @@ static uint8_t set_groups(struct pb_module *module, const struct pb_request *req
 static void cancel(struct pb_module *module, const struct pb_request *request)
 {
     if (!pb_request_has(request, PB_KEY_CANCEL_NUMBER)) {
+        if (PB_VARIANT(cancel_hits_the_next) && module->motion.running == NULL)
+            module->motion.stopping = true;
         pb_ending_stop_all(module, PB_CAUSE_CANCEL);
         return;
     }
     const uint32_t number = (uint32_t)pb_request_number(request, PB_KEY_CANCEL_NUMBER, 0);
-    pb_ending_cancel(module, pb_motion_find(module, request->header.source, request->header.session, number));
+    struct pb_slot *slot = pb_motion_find(module, request->header.source, request->header.session, number);
+    if (PB_VARIANT(cancel_of_nothing_accepted) && slot == NULL)
+        return;
+    pb_ending_cancel(module, slot);
 }
 
 static void clear_faults(struct pb_module *module, const struct pb_request *request)
@@ -60,8 +66,11 @@ static void clear_faults(struct pb_module *module, const struct pb_request *requ
         if (fault == NULL)
             continue; /* named twice */
         fault->latched = false;
-        fault->told = true; /* who clears it knows of it */
+        fault->told = !PB_VARIANT(cleared_fault_still_told); /* who clears it knows of it */
     }
+    if (PB_VARIANT(clear_clears_all))
+        for (unsigned i = 0; i <= module->config->faults; i++)
+            module->faults.list[i].latched = false;
     pb_faults_after_clear(module);
 }
 
@@ -73,7 +82,7 @@ static void renew(struct pb_module *module, const struct pb_request *request)
 
 static void de_energize(struct pb_module *module)
 {
-    pb_ending_stop_all(module, PB_CAUSE_DE_ENERGIZED);
+    pb_ending_stop_all(module, PB_VARIANT(de_energized_said_cancel) ? PB_CAUSE_CANCEL : PB_CAUSE_DE_ENERGIZED);
     pb_state_de_energize(module);
 }
 
@@ -98,6 +107,10 @@ static uint8_t act(struct pb_module *module, const struct pb_request *request, u
     switch (request->header.kind) {
     case PB_KIND_RESET:
         module->state.halt_latch = false;
+        if (PB_VARIANT(reset_clears_fault_latch))
+            module->state.fault_latch = false;
+        if (PB_VARIANT(reset_energizes))
+            pb_state_energize(module);
         return 0;
     case PB_KIND_TAKE_LEASE:
         take_lease(module, request, receipt);
@@ -106,7 +119,10 @@ static uint8_t act(struct pb_module *module, const struct pb_request *request, u
         renew(module, request);
         return 0;
     case PB_KIND_RELEASE_LEASE:
-        pb_lease_end(module);
+        if (PB_VARIANT(release_keeps_motion) && module->motion.running != NULL)
+            module->lease.held = false;
+        else
+            pb_lease_end(module);
         return 0;
     case PB_KIND_ENERGIZE:
         pb_state_energize(module);
@@ -149,7 +165,11 @@ void pb_execute(struct pb_module *module, const struct pb_request *request, uint
         *receipt = pb_refusal(module, reason, PB_NO_KEY);
         return;
     }
-    const bool extends = !request->many && request->header.kind != PB_KIND_ASSIST;
+    bool extends = !request->many && request->header.kind != PB_KIND_ASSIST;
+    if (PB_VARIANT(lease_extended_by_assist))
+        extends = !request->many;
+    if (PB_VARIANT(lease_extended_by_renewal_only))
+        extends = false;
     if (extends && pb_lease_is_holder(module, request->header.source, request->header.session))
         pb_lease_extend(module);
 }

@@ -27,6 +27,8 @@ bool pb_fault_is_known(int64_t code)
 
 bool pb_fault_is_latching(uint8_t code)
 {
+    if (PB_VARIANT(notice_latches) && code == PB_FAULT_SHELL_WARM)
+        return true;
     return kind_of(code)->is_latching;
 }
 
@@ -76,6 +78,8 @@ static bool must_stay(const struct pb_module *module, const struct pb_fault *fau
 {
     if (!fault->used)
         return false;
+    if (PB_VARIANT(overflow_overwrites))
+        return false;
     if (pb_fault_is_latching(fault->code))
         return fault->latched;
     if (pb_faults_is_standing(module, fault->code))
@@ -111,8 +115,9 @@ static void record(struct pb_module *module, struct pb_fault *fault, uint8_t cod
     fault->clock_us = edge->clock_us;
     fault->value = edge->value;
     fault->event = ++module->event_number;
+    fault->told = PB_VARIANT(fault_without_holder_silent) && !module->lease.held;
     fault->interval_ms = PB_LIMIT_FAULT_REPEAT_FIRST;
-    fault->next_send_us = module->now_us;
+    fault->next_send_us = module->now_us + (PB_VARIANT(fault_told_late) ? 400000 : 0);
     module->faults.unrecorded &= (uint16_t)~bit(code);
 }
 
@@ -120,6 +125,8 @@ static void record(struct pb_module *module, struct pb_fault *fault, uint8_t cod
  * recorded only if the latch it set could not be cleared otherwise, because nothing else is latched. */
 void pb_faults_record_waiting(struct pb_module *module)
 {
+    if (PB_VARIANT(overflow_forgets_standing))
+        return;
     for (uint8_t code = 1; code < PB_FAULT_CODES && module->faults.unrecorded != 0; code++) {
         if ((module->faults.unrecorded & bit(code)) == 0)
             continue;
@@ -134,7 +141,8 @@ void pb_faults_record_waiting(struct pb_module *module)
 static void note_edge(struct pb_module *module, uint8_t code)
 {
     struct pb_edge *edge = &module->faults.edges[code];
-    edge->count++;
+    if (!PB_VARIANT(count_stays_one) || edge->count == 0)
+        edge->count++;
     edge->clock_us = pb_state_clock(module, module->now_us);
     edge->value = measured(module, code);
 }
@@ -159,10 +167,12 @@ static void occur(struct pb_module *module, uint8_t code)
         record(module, place, code);
     else
         lose(module, code);
+    if (PB_VARIANT(overflow_sets_no_latch) && place == NULL)
+        return;
     if (!pb_fault_is_latching(code))
         return;
     module->state.fault_latch = true;
-    pb_ending_stop_all(module, PB_CAUSE_FAULT);
+    pb_ending_stop_all(module, PB_VARIANT(fault_said_halt) ? PB_CAUSE_HALT : PB_CAUSE_FAULT);
     pb_state_settle_power(module);
 }
 
@@ -178,7 +188,7 @@ void pb_faults_start(struct pb_module *module, uint16_t surviving)
 
 void pb_faults_raise(struct pb_module *module, uint8_t code)
 {
-    if (pb_faults_is_standing(module, code))
+    if (pb_faults_is_standing(module, code) && !PB_VARIANT(standing_raises_again))
         return;
     module->faults.standing |= bit(code);
     occur(module, code);
@@ -193,6 +203,12 @@ void pb_faults_happen(struct pb_module *module, uint8_t code)
 void pb_faults_withdraw(struct pb_module *module, uint8_t code)
 {
     module->faults.standing &= (uint16_t)~bit(code);
+    if (PB_VARIANT(fault_clears_itself)) {
+        for (unsigned i = 0; i <= module->config->faults; i++)
+            if (module->faults.list[i].code == code)
+                module->faults.list[i].latched = false;
+        pb_faults_after_clear(module);
+    }
     pb_faults_record_waiting(module);
 }
 
@@ -225,10 +241,10 @@ unsigned pb_faults_latched_count(const struct pb_module *module)
 
 void pb_faults_after_clear(struct pb_module *module)
 {
-    if (pb_faults_latched_count(module) == 0)
+    if (pb_faults_latched_count(module) == 0 || PB_VARIANT(one_clear_opens_latch))
         module->state.fault_latch = false;
     pb_faults_record_waiting(module);
-    if (pb_faults_latched_count(module) > 0)
+    if (pb_faults_latched_count(module) > 0 && !PB_VARIANT(one_clear_opens_latch))
         module->state.fault_latch = true;
     else
         module->faults.unrecorded &= module->faults.standing;
@@ -251,7 +267,8 @@ const struct pb_fault *pb_faults_entry(const struct pb_module *module, unsigned 
     for (unsigned i = 0; i <= module->config->faults; i++) {
         unsigned newer = 0;
         for (unsigned k = 0; k <= module->config->faults; k++)
-            if (list[k].used && list[k].occurrence > list[i].occurrence)
+            if (list[k].used && (PB_VARIANT(faults_oldest_first) ? list[k].occurrence < list[i].occurrence
+                                                                 : list[k].occurrence > list[i].occurrence))
                 newer++;
         if (list[i].used && newer == age)
             return &list[i];

@@ -1,6 +1,7 @@
 /* The stage `form` of judging. */
 #include "assist.h"
 #include "judge.h"
+#include "variant.h"
 
 enum { FIELDS_MAX = 16 };
 
@@ -41,6 +42,8 @@ static bool has_type(const struct pb_request *request, const struct pb_field *fi
 
 static bool is_required(const struct pb_request *request, const struct pb_field *field)
 {
+    if (PB_VARIANT(missing_field_is_zero) && field->key >= 2)
+        return false;
     if (field->required == PB_REQUIRED_ALWAYS || field->required == PB_REQUIRED_UNICAST)
         return true;
     return request->header.kind == PB_KIND_ASSIST &&
@@ -59,7 +62,7 @@ uint8_t pb_judge_form(const struct pb_request *request, uint8_t *key)
     *key = PB_NO_KEY;
     if (request->kind == NULL)
         return PB_REFUSAL_UNKNOWN_KIND;
-    if (request->header.flags != 0)
+    if (request->header.flags != 0 && !PB_VARIANT(flags_ignored))
         return PB_REFUSAL_NOT_UNDERSTOOD;
     if (!request->well_formed)
         return PB_REFUSAL_MALFORMED;

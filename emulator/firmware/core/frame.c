@@ -2,13 +2,28 @@
 
 #include "bytes.h"
 #include "crc.h"
+#include "variant.h"
+
+static bool check_matches(const uint8_t *frame, size_t covered)
+{
+    const uint32_t told = (uint32_t)pb_get(frame + covered, PB_CHECK_SIZE);
+    if (PB_VARIANT(crc_leaves_out_version)) {
+        const uint8_t version = PB_VERSION;
+        return told == pb_crc_end(pb_crc_add(pb_crc_add(pb_crc_begin(), &version, 1), frame + 1, covered - 1));
+    }
+    if (PB_VARIANT(crc_compared_in_16_bits))
+        return (uint16_t)told == (uint16_t)pb_crc(frame, covered);
+    if (PB_VARIANT(crc_zero_means_none) && told == 0)
+        return true;
+    return told == pb_crc(frame, covered);
+}
 
 uint8_t pb_frame_read(const uint8_t *frame, size_t size, struct pb_header *header)
 {
-    if (size < PB_FRAME_SIZE_MIN)
+    if (size < PB_FRAME_SIZE_MIN && !PB_VARIANT(short_frame_underflows))
         return PB_DROP_TOO_SHORT;
     const size_t covered = size - PB_CHECK_SIZE;
-    if (pb_crc(frame, covered) != pb_get(frame + covered, PB_CHECK_SIZE))
+    if (!check_matches(frame, covered))
         return PB_DROP_CRC;
     header->version = frame[PB_OFFSET_VERSION];
     header->kind = frame[PB_OFFSET_KIND];

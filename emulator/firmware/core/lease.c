@@ -10,7 +10,8 @@ void pb_lease_start(struct pb_module *module)
 
 bool pb_lease_is_holder(const struct pb_module *module, uint32_t source, uint32_t session)
 {
-    return module->lease.held && module->lease.source == source && module->lease.session == session;
+    const bool is_same = module->lease.session == session || PB_VARIANT(holder_known_by_address);
+    return module->lease.held && module->lease.source == source && is_same;
 }
 
 void pb_lease_grant(struct pb_module *module, uint32_t source, uint32_t session, uint32_t duration_ms)
@@ -22,6 +23,8 @@ void pb_lease_grant(struct pb_module *module, uint32_t source, uint32_t session,
         module->lease.number++;
     module->lease.duration_ms = duration_ms;
     pb_lease_extend(module);
+    if (PB_VARIANT(started_told_at_grant))
+        module->state.tell_started = true;
     if (!PB_VARIANT(grant_tells_nothing))
         pb_faults_announce(module);
 }
@@ -29,6 +32,8 @@ void pb_lease_grant(struct pb_module *module, uint32_t source, uint32_t session,
 void pb_lease_extend(struct pb_module *module)
 {
     module->lease.end_us = module->now_us + 1000u * (uint64_t)module->lease.duration_ms;
+    if (PB_VARIANT(lease_ends_early))
+        module->lease.end_us -= 20000;
     if (PB_VARIANT(lease_lasts_longer))
         module->lease.end_us += 1000000u;
 }
@@ -43,9 +48,15 @@ uint32_t pb_lease_remaining_ms(const struct pb_module *module)
 void pb_lease_end(struct pb_module *module)
 {
     module->lease.held = false;
-    module->lease.source = 0;
-    module->lease.session = 0;
-    if (!PB_VARIANT(lease_end_moves_on))
+    if (!PB_VARIANT(former_holder_told)) {
+        module->lease.source = 0;
+        module->lease.session = 0;
+    }
+    const bool is_left = PB_VARIANT(lease_end_leaves_scheduled) && module->motion.running == NULL;
+    if (!PB_VARIANT(lease_end_moves_on) && !is_left)
         pb_ending_stop_all(module, PB_CAUSE_LEASE_END);
-    pb_state_settle_power(module);
+    if (PB_VARIANT(telemetry_ends_with_lease))
+        pb_telemetry_off(module);
+    if (!PB_VARIANT(lease_end_takes_no_power))
+        pb_state_settle_power(module);
 }

@@ -12,12 +12,18 @@ static void forget(struct pb_module *module, uint8_t restart_cause)
     module->silent_refusals = 0;
     pb_stream_reset(&module->stream);
     pb_plant_power_up(&module->plant);
+    if (PB_VARIANT(restart_opens_bonds) && module->epoch > 1)
+        for (uint8_t face = 0; face < module->plant.face_count; face++)
+            pb_plant_unbond(&module->plant, face);
     pb_state_start(module, restart_cause);
-    pb_lease_start(module);
-    pb_history_start(module);
+    if (!PB_VARIANT(lease_survives_restart))
+        pb_lease_start(module);
+    if (!PB_VARIANT(history_survives_restart))
+        pb_history_start(module);
     pb_motion_start(module);
     pb_slots_start(module);
-    pb_telemetry_off(module);
+    if (!PB_VARIANT(telemetry_survives_restart))
+        pb_telemetry_off(module);
     pb_assist_start(module);
     pb_truth_start(module);
     pb_answers_start(module);
@@ -30,6 +36,12 @@ static bool take_epoch(struct pb_module *module)
     pb_storage_load(module);
     struct pb_settings settings = module->storage.kept;
     settings.epoch++;
+    if (PB_VARIANT(epoch_not_kept))
+        settings.epoch = 1;
+    if (PB_VARIANT(epoch_skipped_by_power_cut) && module->epoch >= settings.epoch)
+        settings.epoch = module->epoch + 1;
+    if (PB_VARIANT(address_not_kept))
+        settings.address = 0;
     module->epoch_unsaved = !pb_storage_commit(module, &settings);
     module->epoch = settings.epoch;
     module->address = settings.address != 0 ? settings.address : module->config->address;
@@ -41,12 +53,14 @@ void pb_module_start(struct pb_module *module, uint8_t restart_cause)
     while (!take_epoch(module)) /* fails once at most: only assist lets it */
         restart_cause = PB_RESTART_CAUSE_POWER_ON;
     forget(module, restart_cause);
-    pb_faults_start(module, module->surviving);
+    if (PB_VARIANT(boot_text_on_link))
+        module->port.send(module->port.context, (const uint8_t *)"starting\n", 9);
+    pb_faults_start(module, PB_VARIANT(surviving_cause_forgotten) ? 0 : module->surviving);
     if (module->epoch_unsaved)
         pb_faults_raise(module, PB_FAULT_STORAGE_FAILED);
     if (restart_cause == PB_RESTART_CAUSE_BROWN_OUT)
         pb_faults_happen(module, PB_FAULT_BROWN_OUT);
-    if (restart_cause == PB_RESTART_CAUSE_WATCHDOG)
+    if (restart_cause == PB_RESTART_CAUSE_WATCHDOG && !PB_VARIANT(watchdog_restart_unnoticed))
         pb_faults_happen(module, PB_FAULT_WATCHDOG);
     pb_state_begin_changes(module);
     pb_state_note_change(module);
@@ -122,10 +136,19 @@ void pb_module_feed(struct pb_module *module, uint64_t time_us, const uint8_t *b
     arrive(module, time_us);
     if (size > 0 && pb_stream_expire(&module->stream, module->now_us))
         pb_intake_drop(module, PB_DROP_HALF_FRAME);
+    const bool is_stamped_early = PB_VARIANT(stamped_at_first_byte) || PB_VARIANT(lease_counted_from_first_byte);
+    if (is_stamped_early && pb_stream_is_inside(&module->stream))
+        module->now_us = module->stream.last_byte_us;
+    if (PB_VARIANT(each_piece_begins_anew))
+        pb_stream_reset(&module->stream);
+    if (PB_VARIANT(burst_is_cut) && size > 2048)
+        size = 2048;
     for (size_t i = 0; i < size; i++) {
         switch (pb_stream_take(&module->stream, module->now_us, bytes[i])) {
         case PB_STREAM_BLOCK:
             take_block(module);
+            if (PB_VARIANT(one_frame_a_piece))
+                return;
             break;
         case PB_STREAM_TOO_LONG:
             pb_intake_drop(module, PB_DROP_TOO_LONG);

@@ -15,6 +15,10 @@ bool pb_motion_has_place(const struct pb_module *module, bool is_scheduled)
         return pb_slots_count(module, PB_SLOT_SCHEDULED) < module->config->scheduled;
     /* one runs or is about to; the queue is what waits behind it */
     const unsigned running = module->motion.running != NULL ? 1 : 0;
+    if (PB_VARIANT(full_queue_accepts))
+        return true;
+    if (PB_VARIANT(queue_one_short))
+        return pb_slots_count(module, PB_SLOT_QUEUED) + running < module->config->queue;
     return pb_slots_count(module, PB_SLOT_QUEUED) + running < module->config->queue + 1u;
 }
 
@@ -30,10 +34,18 @@ void pb_motion_accept(struct pb_module *module, const struct pb_request *request
     slot->face = (uint8_t)pb_request_number(request, PB_KEY_MOVE_FACE, 0);
     slot->allow_last_bond = pb_request_number(request, PB_KEY_MOVE_ALLOW_LAST_BOND, 0) != 0;
     slot->receipt = receipt;
+    if (PB_VARIANT(starts_counted_at_acceptance))
+        module->truth.motion_starts++;
     if (pb_request_has(request, PB_KEY_MOVE_START_AT)) {
         const uint32_t start_at = (uint32_t)pb_request_number(request, PB_KEY_MOVE_START_AT, 0);
         slot->state = PB_SLOT_SCHEDULED;
         slot->start_us = module->now_us + (uint32_t)(start_at - pb_state_clock(module, module->now_us));
+        if (PB_VARIANT(late_start_runs) && slot->start_us - module->now_us >= 0x80000000u)
+            slot->start_us = module->now_us + 5000;
+        if (PB_VARIANT(start_early))
+            slot->start_us -= 15000;
+        if (PB_VARIANT(start_at_overlooked))
+            slot->state = PB_SLOT_QUEUED;
     }
 }
 
@@ -46,11 +58,13 @@ struct pb_slot *pb_motion_find(struct pb_module *module, uint32_t source, uint32
         if (is_open && !slot->ending && slot->source == source && slot->session == session && slot->number == number)
             return slot;
     }
-    return NULL;
+    return PB_VARIANT(cancel_number_not_compared) ? module->motion.running : NULL;
 }
 
 bool pb_motion_is_last_bond(const struct pb_module *module, uint8_t motion, uint8_t face)
 {
+    if (PB_VARIANT(last_bond_opened))
+        return false;
     return motion == PB_MOTION_UNBOND && module->plant.faces[face].bonded && pb_plant_bonds(&module->plant) == 1;
 }
 
@@ -67,7 +81,8 @@ static void follow_phase(struct pb_module *module)
     const struct pb_motion_config *config = config_of(module, module->motion.running);
     const bool ends_at_no_return = module->motion.phase == PB_PHASE_RUNNING && config->no_return_ms > 0;
     const uint64_t end_us = 1000u * (uint64_t)(ends_at_no_return ? config->no_return_ms : config->typical_ms);
-    module->motion.next_us = module->now_us + end_us - pb_plant_progress_us(&module->plant, module->now_us);
+    const unsigned slowness = PB_VARIANT(motion_takes_too_long) ? 3 : 1;
+    module->motion.next_us = module->now_us + slowness * end_us - pb_plant_progress_us(&module->plant, module->now_us);
 }
 
 static void enter_phase(struct pb_module *module, uint8_t phase)
@@ -89,7 +104,7 @@ static void conclude(struct pb_module *module, struct pb_slot *slot)
     slot->outcome = PB_OUTCOME_DONE;
     if (slot->motion == PB_MOTION_BOND) {
         const bool was_bonded = module->plant.faces[slot->face].bonded;
-        if (!pb_plant_bond(&module->plant, slot->face)) {
+        if (!pb_plant_bond(&module->plant, slot->face) && !PB_VARIANT(bond_with_nothing_done)) {
             slot->outcome = PB_OUTCOME_FAILED;
             slot->cause = PB_CAUSE_NO_NEIGHBOUR;
         } else if (!was_bonded) {
@@ -98,17 +113,22 @@ static void conclude(struct pb_module *module, struct pb_slot *slot)
     } else if (slot->motion == PB_MOTION_UNBOND) {
         if (module->plant.faces[slot->face].bonded)
             pb_truth_log(module, PB_TRUTH_EVENT_BOND_OPENED);
-        pb_plant_unbond(&module->plant, slot->face);
+        if (!PB_VARIANT(unbond_not_recorded))
+            pb_plant_unbond(&module->plant, slot->face);
     } else {
         module->motion.position_known = true;
     }
+    if (PB_VARIANT(position_known_by_bonding))
+        module->motion.position_known = true;
 }
 
 static void reach_rest(struct pb_module *module)
 {
     struct pb_motion *motion = &module->motion;
     struct pb_slot *slot = motion->running;
-    const int32_t displacement = pb_plant_displacement(&module->plant, module->now_us);
+    int32_t displacement = pb_plant_displacement(&module->plant, module->now_us);
+    if (PB_VARIANT(displacement_as_asked))
+        displacement = slot->magnitude;
     const uint64_t duration_ms = (module->now_us - slot->start_us) / 1000u;
     if (!motion->stopping)
         conclude(module, slot);
@@ -117,7 +137,8 @@ static void reach_rest(struct pb_module *module)
     motion->running = NULL;
     module->state.activity = PB_ACTIVITY_ENERGIZED;
     pb_slots_form(module, slot, displacement, duration_ms > UINT16_MAX ? UINT16_MAX : (uint16_t)duration_ms);
-    if (slot->outcome != PB_OUTCOME_DONE && !PB_VARIANT(predecessor_forgotten))
+    const bool goes_on = PB_VARIANT(predecessor_forgotten) || PB_VARIANT(queue_runs_though_halted);
+    if (slot->outcome != PB_OUTCOME_DONE && !goes_on)
         pb_ending_all_waiting(module, PB_SLOT_QUEUED, PB_CAUSE_PREDECESSOR);
     pb_ending_form(module);
     pb_state_settle_power(module);
@@ -141,6 +162,8 @@ static void end_phase(struct pb_module *module)
 
 static bool may_begin(const struct pb_module *module)
 {
+    if (PB_VARIANT(queue_runs_though_halted))
+        return module->state.activity == PB_ACTIVITY_ENERGIZED;
     return module->state.activity == PB_ACTIVITY_ENERGIZED && !module->state.halt_latch &&
            !module->state.fault_latch && module->lease.held;
 }
@@ -156,7 +179,8 @@ static void fail_waiting(struct pb_module *module, struct pb_slot *slot, uint8_t
 static void begin(struct pb_module *module, struct pb_slot *slot)
 {
     struct pb_motion *motion = &module->motion;
-    if (!slot->allow_last_bond && pb_motion_is_last_bond(module, slot->motion, slot->face)) {
+    const bool is_last_bond = pb_motion_is_last_bond(module, slot->motion, slot->face);
+    if (!slot->allow_last_bond && is_last_bond && !PB_VARIANT(last_bond_judged_once)) {
         const bool was_queued = slot->state == PB_SLOT_QUEUED;
         fail_waiting(module, slot, PB_CAUSE_LAST_BOND);
         if (was_queued)
@@ -164,6 +188,7 @@ static void begin(struct pb_module *module, struct pb_slot *slot)
         pb_ending_form(module);
         return;
     }
+    const bool is_hit = PB_VARIANT(cancel_hits_the_next) && motion->stopping && motion->running == NULL;
     slot->state = PB_SLOT_RUNNING;
     slot->held = false;
     slot->start_us = module->now_us;
@@ -175,6 +200,8 @@ static void begin(struct pb_module *module, struct pb_slot *slot)
     pb_plant_begin(&module->plant, module->now_us, config_of(module, slot), slot->magnitude);
     pb_truth_log(module, PB_TRUTH_EVENT_MOTION_START);
     enter_phase(module, PB_PHASE_RUNNING);
+    if (is_hit)
+        pb_ending_cancel(module, slot);
 }
 
 /* Phase ready: held there if that was asked for. A scheduled motion that is held becomes the first of the queue. */
@@ -195,7 +222,9 @@ static void get_ready(struct pb_module *module, struct pb_slot *slot)
 /* The stated start has come: now or not at all. */
 static void begin_scheduled(struct pb_module *module, struct pb_slot *slot)
 {
-    if (module->motion.running != NULL || !pb_answers_have_left(module, slot->receipt))
+    if (PB_VARIANT(late_start_waits) && module->motion.running != NULL)
+        slot->state = PB_SLOT_QUEUED;
+    else if (module->motion.running != NULL || !pb_answers_have_left(module, slot->receipt))
         fail_waiting(module, slot, PB_CAUSE_LATE);
     else
         get_ready(module, slot);
@@ -204,7 +233,9 @@ static void begin_scheduled(struct pb_module *module, struct pb_slot *slot)
 static struct pb_slot *ready_to_begin(struct pb_module *module)
 {
     struct pb_slot *head = may_begin(module) ? pb_slots_first(module, PB_SLOT_QUEUED, false) : NULL;
-    if (head == NULL || head->held || !pb_answers_have_left(module, head->receipt))
+    if (head == NULL || head->held)
+        return NULL;
+    if (!pb_answers_have_left(module, head->receipt) && !PB_VARIANT(motion_before_receipt))
         return NULL;
     return head;
 }
@@ -255,7 +286,7 @@ bool pb_motion_step(struct pb_module *module)
 
 void pb_motion_hold(struct pb_module *module, uint8_t phase)
 {
-    module->motion.hold_phase = phase;
+    module->motion.hold_phase = PB_VARIANT(hold_ignored) ? 0 : phase;
 }
 
 /* Lets go what is held; with nothing held, the next motion is not held either. */

@@ -1,6 +1,7 @@
 #include "plant.h"
 
 #include "bytes.h"
+#include "variant.h"
 
 void pb_plant_build(struct pb_plant *plant, const struct pb_config *config)
 {
@@ -15,7 +16,8 @@ void pb_plant_build(struct pb_plant *plant, const struct pb_config *config)
 
 void pb_plant_power_up(struct pb_plant *plant)
 {
-    plant->powered = false;
+    if (!PB_VARIANT(restart_keeps_power))
+        plant->powered = false;
     plant->active = false;
     plant->frozen = false;
     plant->position = 0;
@@ -33,6 +35,10 @@ void pb_plant_begin(struct pb_plant *plant, uint64_t now_us, const struct pb_mot
     plant->begun_us = now_us;
     plant->travel_us = 1000u * (uint64_t)motion->typical_ms;
     plant->magnitude = magnitude;
+    if (PB_VARIANT(magnitude_clamped) && magnitude > motion->magnitude_max)
+        plant->magnitude = motion->magnitude_max;
+    if (PB_VARIANT(motion_stops_short))
+        plant->magnitude = magnitude / 20 * 19;
 }
 
 void pb_plant_freeze(struct pb_plant *plant, uint64_t now_us)

@@ -60,6 +60,12 @@ static bool is_in_range(const struct pb_request *request, const struct pb_field 
     const struct pb_value value = pb_body_value(&request->body, field->key, &contents);
     switch (value.type) {
     case PB_TYPE_INTEGER:
+        if (PB_VARIANT(lease_duration_not_checked) && field->maximum == PB_LIMIT_LEASE_DURATION_MAX)
+            return value.integer > 0 && value.integer <= UINT16_MAX;
+        if (PB_VARIANT(short_period_taken) && field->maximum == PB_LIMIT_TELEMETRY_PERIOD_MAX)
+            return value.integer > 0 && value.integer <= field->maximum;
+        if (PB_VARIANT(page_cut_to_a_byte) && field->maximum == UINT8_MAX)
+            return true;
         return value.integer >= field->minimum && value.integer <= field->maximum;
     case PB_TYPE_BYTES:
         return value.size >= field->items_min && value.size <= field->items_max;
@@ -79,6 +85,8 @@ static bool magnitude_is_declared(const struct pb_module *module, const struct p
     const struct pb_motion_config *config = pb_config_motion(module->config, motion);
     if (motion == PB_MOTION_BOND || motion == PB_MOTION_UNBOND)
         return magnitude == 0;
+    if (PB_VARIANT(magnitude_clamped))
+        return config != NULL;
     return config != NULL && magnitude >= config->magnitude_min && magnitude <= config->magnitude_max;
 }
 
@@ -109,9 +117,11 @@ static bool is_declared(const struct pb_module *module, const struct pb_request 
             return magnitude_is_declared(module, request);
         return key != PB_KEY_MOVE_FACE || face_is_declared(module, request);
     case PB_KIND_SET_GROUPS:
-        return key != PB_KEY_SET_GROUPS_GROUPS || pb_range_groups(request, NULL, 0) <= module->config->groups;
+        return key != PB_KEY_SET_GROUPS_GROUPS || PB_VARIANT(groups_not_counted) ||
+               pb_range_groups(request, NULL, 0) <= module->config->groups;
     case PB_KIND_ASSIGN_ADDRESS:
-        return key != PB_KEY_ASSIGN_ADDRESS_HARDWARE_ID || pb_range_is_own_hardware_id(module, request);
+        return key != PB_KEY_ASSIGN_ADDRESS_HARDWARE_ID || PB_VARIANT(any_hardware_id_taken) ||
+               pb_range_is_own_hardware_id(module, request);
     case PB_KIND_ASSIST:
         return assist_is_in_range(request, key);
     default:
@@ -130,13 +140,16 @@ static bool is_examined(const struct pb_request *request, const struct pb_field 
 
 uint8_t pb_range_check(const struct pb_module *module, const struct pb_request *request, uint8_t *key)
 {
+    uint8_t reason = 0;
     for (const struct pb_field *field = request->kind->fields; field->type != PB_FIELD_END; field++) {
         if (!is_examined(request, field))
             continue;
         if (!is_in_range(request, field) || !is_declared(module, request, field->key)) {
             *key = field->key;
-            return PB_REFUSAL_OUT_OF_RANGE;
+            reason = PB_REFUSAL_OUT_OF_RANGE;
+            if (!PB_VARIANT(highest_key_named))
+                break;
         }
     }
-    return 0;
+    return reason;
 }

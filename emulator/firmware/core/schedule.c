@@ -41,7 +41,9 @@ static bool take_input(struct pb_module *module)
         pb_state_end_starting(module);
         return true;
     }
-    if (module->lease.held && module->lease.end_us <= module->now_us) {
+    const bool is_wrapped = PB_VARIANT(clock_wrap_ends_lease) && module->lease.held &&
+                            pb_state_clock(module, module->now_us) >= pb_state_clock(module, module->lease.end_us);
+    if (is_wrapped || (module->lease.held && module->lease.end_us <= module->now_us)) {
         pb_lease_end(module);
         return true;
     }

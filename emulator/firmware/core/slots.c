@@ -6,9 +6,28 @@
 static const uint64_t REPEAT_FIRST_US = 1000u * PB_LIMIT_OUTCOME_REPEAT_FIRST;
 static const uint64_t RESEND_SPACING_US = 1000u * PB_LIMIT_OUTCOME_RESEND_SPACING;
 
+/* What two of the broken variants carry over a restart. */
+static void keep_outcomes(struct pb_module *module)
+{
+    for (unsigned i = 0; i < module->config->outcomes; i++) {
+        struct pb_slot *slot = &module->slots.slots[i];
+        slot->receipt = 0;
+        slot->next_send_us = module->now_us;
+        if (slot->state != PB_SLOT_FORMED && slot->state != PB_SLOT_FREE) {
+            slot->outcome = PB_OUTCOME_LOST;
+            pb_slots_form(module, slot, 0, 0);
+        }
+        if (PB_VARIANT(lost_outcomes_sent) != (slot->outcome == PB_OUTCOME_LOST))
+            slot->state = PB_SLOT_FREE;
+    }
+}
+
 void pb_slots_start(struct pb_module *module)
 {
-    pb_clear(&module->slots, sizeof module->slots);
+    if (PB_VARIANT(outcomes_survive_restart) || PB_VARIANT(lost_outcomes_sent))
+        keep_outcomes(module);
+    else
+        pb_clear(&module->slots, sizeof module->slots);
 }
 
 static bool is_before(const struct pb_slot *a, const struct pb_slot *b)
@@ -24,6 +43,8 @@ static struct pb_slot *free_place(struct pb_module *module)
         struct pb_slot *slot = &module->slots.slots[i];
         if (slot->state == PB_SLOT_FREE)
             return slot;
+        if (PB_VARIANT(outcomes_overwritten) && slot->state == PB_SLOT_FORMED)
+            return slot;
         if (slot->state == PB_SLOT_CONFIRMED && (oldest == NULL || is_before(slot, oldest)))
             oldest = slot;
     }
@@ -32,6 +53,8 @@ static struct pb_slot *free_place(struct pb_module *module)
 
 bool pb_slots_has_room(const struct pb_module *module)
 {
+    if (PB_VARIANT(outcomes_overwritten))
+        return true;
     return pb_slots_count(module, PB_SLOT_FREE) + pb_slots_count(module, PB_SLOT_CONFIRMED) > 0;
 }
 
@@ -48,7 +71,8 @@ struct pb_slot *pb_slots_first(struct pb_module *module, enum pb_slot_state stat
     struct pb_slot *first = NULL;
     for (unsigned i = 0; i < module->config->outcomes; i++) {
         struct pb_slot *slot = &module->slots.slots[i];
-        if (slot->state == state && slot->ending == ending && (first == NULL || is_before(slot, first)))
+        const bool goes_first = first == NULL || is_before(slot, first) != PB_VARIANT(queue_last_first);
+        if (slot->state == state && slot->ending == ending && goes_first)
             first = slot;
     }
     return first;
@@ -74,7 +98,7 @@ void pb_slots_form(struct pb_module *module, struct pb_slot *slot, int32_t displ
     slot->event = ++module->event_number;
     slot->unstamped = true;
     slot->sendings = 0;
-    slot->next_send_us = module->now_us;
+    slot->next_send_us = module->now_us + (PB_VARIANT(outcome_sent_late) ? 80000 : 0);
 }
 
 static bool is_formed(const struct pb_slot *slot)
@@ -101,7 +125,8 @@ const struct pb_slot *pb_slots_entry(const struct pb_module *module, unsigned ag
 {
     for (unsigned i = 0; i < module->config->outcomes; i++) {
         const struct pb_slot *slot = &module->slots.slots[i];
-        if (is_formed(slot) && age_of(module, slot) == age)
+        const unsigned wanted = PB_VARIANT(records_oldest_first) ? pb_slots_formed(module) - 1u - age : age;
+        if (is_formed(slot) && age_of(module, slot) == wanted)
             return slot;
     }
     return NULL;
@@ -114,9 +139,13 @@ bool pb_slots_confirm(struct pb_module *module, const struct pb_header *header, 
         if (slot->state != PB_SLOT_FORMED || slot->event != event)
             continue;
         const bool is_requester = slot->source == header->source && slot->session == header->session;
-        if (!is_requester && !pb_lease_is_holder(module, header->source, header->session))
-            return false;
-        slot->state = PB_SLOT_CONFIRMED;
+        const bool is_holder = pb_lease_is_holder(module, header->source, header->session);
+        if (PB_VARIANT(holder_cannot_confirm) ? !is_requester : !is_requester && !is_holder)
+            if (!PB_VARIANT(anyone_confirms))
+                return false;
+        if (PB_VARIANT(confirm_does_not_end_repeats))
+            return true;
+        slot->state = PB_VARIANT(confirmed_record_gone) ? PB_SLOT_FREE : PB_SLOT_CONFIRMED;
         return true;
     }
     return false;
@@ -156,6 +185,8 @@ static uint64_t next_due(const struct pb_module *module, const struct pb_slot *s
         return PB_NEVER;
     if (resend_is_due(module, slot))
         return module->now_us;
+    if (PB_VARIANT(outcome_told_once))
+        return slot->sendings == 0 ? slot->next_send_us : PB_NEVER;
     return slot->sendings <= PB_LIMIT_OUTCOME_REPEATS ? slot->next_send_us : PB_NEVER;
 }
 
@@ -171,7 +202,8 @@ uint64_t pb_slots_next_due(const struct pb_module *module)
 static void send_one(struct pb_module *module, struct pb_slot *slot)
 {
     const bool is_repeat = slot->sendings <= PB_LIMIT_OUTCOME_REPEATS && slot->next_send_us <= module->now_us;
-    const bool is_spaced = slot->sendings == 0 || module->now_us - slot->last_sent_us >= RESEND_SPACING_US;
+    const bool is_spaced = slot->sendings == 0 || module->now_us - slot->last_sent_us >= RESEND_SPACING_US ||
+                           PB_VARIANT(copies_bring_outcomes_unspaced);
     if ((is_repeat || is_spaced) && !pb_encode_outcome(module, slot))
         return;
     if (is_repeat || is_spaced)
@@ -180,6 +212,8 @@ static void send_one(struct pb_module *module, struct pb_slot *slot)
         slot->next_send_us = module->now_us + (REPEAT_FIRST_US << slot->sendings);
         slot->sendings++;
     }
+    if (PB_VARIANT(copy_moves_outcome_repeats) && resend_is_due(module, slot) && slot->sendings > 0)
+        slot->next_send_us = module->now_us + (REPEAT_FIRST_US << (slot->sendings - 1));
     if (resend_is_due(module, slot))
         slot->resend = false;
 }

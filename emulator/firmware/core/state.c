@@ -8,10 +8,10 @@ void pb_state_start(struct pb_module *module, uint8_t restart_cause)
     struct pb_state *state = &module->state;
     pb_clear(state, sizeof *state);
     state->activity = PB_ACTIVITY_STARTING;
-    state->halt_latch = true;
+    state->halt_latch = !PB_VARIANT(start_not_halted);
     state->halt_count = 1;
     state->halt_cause = PB_HALT_CAUSE_RESTART;
-    state->restart_cause = restart_cause;
+    state->restart_cause = PB_VARIANT(restart_cause_power_on) ? PB_RESTART_CAUSE_POWER_ON : restart_cause;
     state->boot_us = module->now_us;
     state->started_us = module->now_us + module->config->starting_delay_us;
 }
@@ -28,9 +28,10 @@ uint8_t pb_state_displayed(const struct pb_module *module)
     const struct pb_state *state = &module->state;
     if (state->activity == PB_ACTIVITY_STARTING)
         return PB_STATE_STARTING;
+    const bool is_latched = (state->halt_latch || state->fault_latch) && !PB_VARIANT(stopping_shown_as_moving);
     if (state->activity == PB_ACTIVITY_MOVING)
-        return state->halt_latch || state->fault_latch ? PB_STATE_STOPPING : PB_STATE_MOVING;
-    if (state->fault_latch)
+        return is_latched ? PB_STATE_STOPPING : PB_STATE_MOVING;
+    if (state->fault_latch && !(PB_VARIANT(halted_shown_over_faulted) && state->halt_latch))
         return PB_STATE_FAULTED;
     if (state->halt_latch)
         return PB_STATE_HALTED;
@@ -39,12 +40,21 @@ uint8_t pb_state_displayed(const struct pb_module *module)
 
 uint32_t pb_state_clock(const struct pb_module *module, uint64_t time_us)
 {
-    return (uint32_t)(time_us - module->state.boot_us) + module->state.clock_offset_us;
+    uint64_t since_us = time_us - module->state.boot_us;
+    if (PB_VARIANT(clock_two_percent_fast))
+        since_us += since_us / 50;
+    return (uint32_t)since_us + module->state.clock_offset_us;
 }
 
 /* Whether an actuator keeps its power for every cause that stands against moving now. */
 static bool keeps_power(const struct pb_module *module, const struct pb_motion_config *motion)
 {
+    if (PB_VARIANT(halt_keeps_power) && module->state.halt_latch)
+        return true;
+    if (PB_VARIANT(fault_keeps_power) && module->state.fault_latch)
+        return true;
+    if (PB_VARIANT(holding_axis_lets_go))
+        return !module->state.halt_latch && !module->state.fault_latch && module->lease.held;
     return (!module->state.halt_latch || motion->halt_category == PB_STOP_CATEGORY_CAT_2) &&
            (!module->state.fault_latch || motion->fault_category == PB_STOP_CATEGORY_CAT_2) &&
            (module->lease.held || motion->lease_end_category == PB_STOP_CATEGORY_CAT_2);
@@ -66,6 +76,8 @@ void pb_state_energize(struct pb_module *module)
         return;
     module->state.activity = PB_ACTIVITY_ENERGIZED;
     pb_plant_power(&module->plant, true);
+    if (PB_VARIANT(energize_twitches))
+        module->plant.position++;
     pb_truth_log(module, PB_TRUTH_EVENT_ENERGIZED);
 }
 
@@ -74,7 +86,7 @@ void pb_state_de_energize(struct pb_module *module)
     if (module->state.activity != PB_ACTIVITY_ENERGIZED)
         return;
     module->state.activity = PB_ACTIVITY_IDLE;
-    pb_plant_power(&module->plant, false);
+    pb_plant_power(&module->plant, PB_VARIANT(de_energize_in_words_only));
     pb_truth_log(module, PB_TRUTH_EVENT_DE_ENERGIZED);
 }
 
@@ -83,9 +95,15 @@ uint8_t pb_state_halt(struct pb_module *module, uint8_t halt_cause)
     uint8_t disposition = PB_DISPOSITION_AT_REST;
     if (module->motion.running != NULL)
         disposition = module->motion.committed ? PB_DISPOSITION_PAST_NO_RETURN : PB_DISPOSITION_STOPPING;
-    module->state.halt_latch = true;
-    module->state.halt_count++;
+    if (!PB_VARIANT(halt_counted_once) || !module->state.halt_latch)
+        module->state.halt_count++;
+    if (!PB_VARIANT(halt_ignored_while_faulted) || !module->state.fault_latch)
+        module->state.halt_latch = true;
     module->state.halt_cause = halt_cause;
+    if (PB_VARIANT(halt_says_at_rest))
+        disposition = PB_DISPOSITION_AT_REST;
+    if (PB_VARIANT(halt_extends_lease) && module->lease.held)
+        pb_lease_extend(module);
     pb_ending_stop_all(module, PB_CAUSE_HALT);
     pb_state_settle_power(module);
     return disposition;
@@ -134,7 +152,11 @@ void pb_state_note_change(struct pb_module *module)
 {
     uint32_t words[PB_VISIBLE_WORDS] = {0};
     collect_visible(module, words);
-    if (!pb_equal(words, module->state.visible, sizeof words)) {
+    if (PB_VARIANT(change_leaves_out_holder))
+        words[8] = words[9] = 0;
+    if (PB_VARIANT(change_leaves_out_halt_count))
+        words[4] = 0;
+    if (!pb_equal(words, module->state.visible, sizeof words) || PB_VARIANT(change_raised_by_everything)) {
         pb_copy(module->state.visible, words, sizeof words);
         module->state.change++;
     }

@@ -74,7 +74,7 @@ bool pb_storage_commit(struct pb_module *module, const struct pb_settings *setti
     uint8_t record[PB_STORAGE_RECORD_SIZE];
     if (storage->cut_at > 0 && --storage->cut_at == 0)
         storage->power_failed = true;
-    if (storage->power_failed)
+    if (storage->power_failed && !PB_VARIANT(cut_write_is_made))
         return false;
     /* never over the newest record: a write that fails half-way must leave it sound */
     const unsigned slot = storage->has_record ? 1u - storage->newest_slot : 0u;

@@ -1,5 +1,7 @@
 #include "stream.h"
 
+#include "variant.h"
+
 /* The contract leaves free what happens between the two limits: the middle keeps both with the greatest margin. */
 static const uint64_t EXPIRY_US = 1000u * (PB_LIMIT_HALF_FRAME_BRIDGE + PB_LIMIT_HALF_FRAME_DISCARD) / 2u;
 
@@ -18,7 +20,10 @@ bool pb_stream_is_inside(const struct pb_stream *stream)
 
 bool pb_stream_expire(struct pb_stream *stream, uint64_t now_us)
 {
-    if (!pb_stream_is_inside(stream) || now_us - stream->last_byte_us <= EXPIRY_US)
+    const uint64_t expiry_us = PB_VARIANT(half_frame_expires_early) ? 100000 : EXPIRY_US;
+    if (PB_VARIANT(half_frame_never_expires))
+        return false;
+    if (!pb_stream_is_inside(stream) || now_us - stream->last_byte_us <= expiry_us)
         return false;
     const bool was_told = stream->too_long;
     pb_stream_reset(stream);
@@ -31,7 +36,7 @@ enum pb_stream_step pb_stream_take(struct pb_stream *stream, uint64_t now_us, ui
         pb_stream_reset(stream);
     stream->last_byte_us = now_us;
     if (byte == PB_DELIMITER) {
-        if (stream->size == 0)
+        if (stream->size == 0 && !PB_VARIANT(fill_is_a_frame))
             return PB_STREAM_MORE; /* fill */
         stream->ended = true;
         return stream->too_long ? PB_STREAM_MORE : PB_STREAM_BLOCK;
@@ -42,5 +47,5 @@ enum pb_stream_step pb_stream_take(struct pb_stream *stream, uint64_t now_us, ui
     }
     const bool was_told = stream->too_long;
     stream->too_long = true;
-    return was_told ? PB_STREAM_MORE : PB_STREAM_TOO_LONG;
+    return was_told && !PB_VARIANT(too_long_counted_by_byte) ? PB_STREAM_MORE : PB_STREAM_TOO_LONG;
 }

@@ -10,7 +10,7 @@ void pb_faults_announce(struct pb_module *module)
 {
     for (unsigned i = 0; i <= module->config->faults; i++) {
         struct pb_fault *fault = &module->faults.list[i];
-        if (!fault->latched)
+        if (!fault->latched || (PB_VARIANT(grant_announces_untold_only) && fault->told))
             continue;
         fault->told = false;
         fault->sendings = 0;
@@ -25,7 +25,12 @@ bool pb_faults_confirm(struct pb_module *module, const struct pb_header *header,
         struct pb_fault *fault = &module->faults.list[i];
         if (!fault->used || fault->event != event || fault->told)
             continue;
-        if (!pb_fault_is_latching(fault->code) || pb_lease_is_holder(module, header->source, header->session)) {
+        if (PB_VARIANT(confirm_clears_fault)) {
+            fault->latched = false;
+            pb_faults_after_clear(module);
+        }
+        const bool is_holder = pb_lease_is_holder(module, header->source, header->session);
+        if (PB_VARIANT(stranger_confirms_fault) || !pb_fault_is_latching(fault->code) || is_holder) {
             fault->told = true;
             pb_faults_record_waiting(module);
         } else {
@@ -42,6 +47,8 @@ static uint64_t wanted_us(const struct pb_fault *fault)
 {
     if (!fault->used || fault->told)
         return PB_NEVER;
+    if (PB_VARIANT(notice_repeated_for_ever))
+        return fault->next_send_us;
     if (!pb_fault_is_latching(fault->code) && fault->sendings >= PB_NOTICE_SENDINGS)
         return PB_NEVER;
     return fault->next_send_us;
@@ -53,7 +60,8 @@ uint64_t pb_faults_next_due(const struct pb_module *module)
     uint64_t due_us = PB_NEVER;
     for (unsigned i = 0; i <= module->config->faults; i++)
         due_us = pb_earlier(due_us, wanted_us(&faults->list[i]));
-    if (due_us != PB_NEVER && faults->any_sent && !PB_VARIANT(fault_events_crowd) && due_us < faults->last_sent_us + SPACING_US)
+    const bool is_spaced = faults->any_sent && !PB_VARIANT(fault_events_crowd);
+    if (due_us != PB_NEVER && is_spaced && due_us < faults->last_sent_us + SPACING_US)
         due_us = faults->last_sent_us + SPACING_US;
     return due_us;
 }
@@ -62,7 +70,7 @@ uint64_t pb_faults_next_due(const struct pb_module *module)
 static bool goes_before(const struct pb_fault *fault, const struct pb_fault *other)
 {
     const bool is_first = fault->sendings == 0;
-    if (is_first != (other->sendings == 0))
+    if (is_first != (other->sendings == 0) && !PB_VARIANT(repeats_go_first))
         return is_first;
     return fault->occurrence < other->occurrence;
 }
@@ -83,7 +91,8 @@ void pb_faults_send_due(struct pb_module *module)
     first->told = first->told || PB_VARIANT(fault_told_once);
     module->faults.last_sent_us = module->now_us;
     first->next_send_us = module->now_us + 1000u * (uint64_t)first->interval_ms;
-    first->interval_ms = first->interval_ms < REPEAT_SLOWEST_MS / 2 ? 2 * first->interval_ms : REPEAT_SLOWEST_MS;
+    if (!PB_VARIANT(fault_repeats_every_500ms))
+        first->interval_ms = first->interval_ms < REPEAT_SLOWEST_MS / 2 ? 2 * first->interval_ms : REPEAT_SLOWEST_MS;
     if (first->sendings < UINT8_MAX)
         first->sendings++;
     pb_faults_record_waiting(module);

@@ -11,7 +11,7 @@ void pb_truth_start(struct pb_module *module)
 void pb_truth_log(struct pb_module *module, uint8_t event)
 {
     struct pb_truth *truth = &module->truth;
-    if (event == PB_TRUTH_EVENT_MOTION_START)
+    if (event == PB_TRUTH_EVENT_MOTION_START && !PB_VARIANT(starts_counted_at_acceptance))
         truth->motion_starts++;
     struct pb_truth_entry *entry = &truth->entries[(truth->first + truth->count) % PB_MAX_TRUTH];
     if (truth->count < PB_MAX_TRUTH)

@@ -1,6 +1,7 @@
 #include "writer.h"
 
 #include "bytes.h"
+#include "variant.h"
 
 void pb_write_begin(struct pb_writer *writer, uint8_t *bytes, uint8_t capacity)
 {
@@ -49,7 +50,7 @@ static void write_unsigned(struct pb_writer *writer, uint64_t value)
         write_head(writer, (uint8_t)value, 0, 0);
     else if (value <= UINT8_MAX)
         write_head(writer, 0xCC, 1, value);
-    else if (value <= UINT16_MAX)
+    else if (value <= UINT16_MAX && !(PB_VARIANT(long_numbers_sent) && value > 900 && value < 1000))
         write_head(writer, 0xCD, 2, value);
     else if (value <= UINT32_MAX)
         write_head(writer, 0xCE, 4, value);
