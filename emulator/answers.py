@@ -17,6 +17,7 @@ if TYPE_CHECKING:
     from emulator.faults import Occurrence
 
 PAGE = 3
+TOTAL_MAX = 255
 ANY_SESSION = 0
 
 
@@ -194,7 +195,7 @@ class Answers:
                     entry.time, entry.value, int(entry.code in faults.standing), int(entry.latched), int(entry.told),
                 )
             )  # fmt: skip
-        return {"total": len(faults.occurrences), "lost": faults.lost, "entries": rows}
+        return {"total": min(TOTAL_MAX, len(faults.occurrences)), "lost": faults.lost, "entries": rows}
 
     def _motion_page(self, page: int) -> dict[str, Any]:
         formed = self._engine.motions.formed

@@ -11,7 +11,11 @@ from pydantic import BaseModel, ConfigDict, Field, ValidationError, model_valida
 from protobench.contract import Contract
 
 Milliseconds = Annotated[int, Field(ge=0, le=10_000)]
+Magnitude = Annotated[int, Field(ge=-(1 << 31), lt=1 << 31)]
+Temperature = Annotated[int, Field(ge=-1000, le=3000)]
+UNICAST_LAST = 0xEFFFFFFF
 CAPABILITIES = ("queue", "schedule", "telemetry", "groups", "identify", "assist", "energy")
+MOTIONS = ("pivot", "slide", "hinge", "hop", "bond", "unbond")
 BONDING = ("bond", "unbond")
 CAUSES = ("halt", "fault", "lease_end")
 
@@ -25,8 +29,8 @@ class MotionConfig(BaseModel):
 
     model_config = ConfigDict(extra="forbid", frozen=True)
     actuator: int = Field(0, ge=0, le=15)
-    magnitude_min: int = 0
-    magnitude_max: int = 0
+    magnitude_min: Magnitude = 0
+    magnitude_max: Magnitude = 0
     typical_ms: int = Field(ge=1, le=10_000)
     longest_ms: int = Field(ge=1, le=10_000)
     no_return_ms: Milliseconds = 0
@@ -52,7 +56,7 @@ class FaceConfig(BaseModel):
 
     model_config = ConfigDict(extra="forbid", frozen=True)
     bonded: bool = False
-    neighbour: int = Field(0, ge=0, le=0xEFFFFFFF)
+    neighbour: int = Field(0, ge=0, le=UNICAST_LAST)
 
 
 def _default_motions() -> dict[str, MotionConfig]:
@@ -77,7 +81,7 @@ class ModuleConfig(BaseModel):
     """One module. Times with ``declared_`` in front are what it says, the others what it takes."""
 
     model_config = ConfigDict(extra="forbid", frozen=True)
-    address: int = Field(1, ge=0, le=0xEFFFFFFF)
+    address: int = Field(1, ge=0, le=UNICAST_LAST)
     hardware_id: bytes = Field(b"\xe0\0\0\0\0\0\0\x01", min_length=8, max_length=8)
     build: bytes = Field(b"emulated", min_length=8, max_length=8)
     capabilities: tuple[str, ...] = CAPABILITIES
@@ -100,13 +104,16 @@ class ModuleConfig(BaseModel):
     declared_stop_ms: int = Field(50, ge=0, le=500)
     supply_mv: int = Field(7400, ge=0, le=65_535)
     battery_permille: int = Field(870, ge=0, le=1000)
-    temperatures: tuple[int, ...] = (231, 228, 224)
+    temperatures: tuple[Temperature, ...] = Field((231, 228, 224), max_length=4)
 
     @model_validator(mode="after")
     def _agrees(self) -> ModuleConfig:
         for name in self.capabilities:
             if name not in CAPABILITIES:
                 raise ValueError(f"capability {name!r}: one of {', '.join(CAPABILITIES)}")
+        for name in self.motions:
+            if name not in MOTIONS:
+                raise ValueError(f"motion {name!r}: one of {', '.join(MOTIONS)}")
         for name, size in (("queue", self.queue), ("schedule", self.scheduled), ("groups", self.groups)):
             if (name in self.capabilities) != bool(size):
                 raise ValueError(f"capability {name} and its size {size} contradict each other")
@@ -130,7 +137,9 @@ class ModuleConfig(BaseModel):
         return "energized" if holds else "idle"
 
     def at(self, address: int) -> ModuleConfig:
-        """The same module with another address, and a hardware id made from it."""
+        """The same module with another address, and a hardware id made from it. Raises ConfigError."""
+        if not 1 <= address <= UNICAST_LAST:
+            raise ConfigError(f"address = {address}: a module's address lies between 1 and {UNICAST_LAST}")
         return self.model_copy(
             update={"address": address, "hardware_id": b"\xe0\0\0\0" + address.to_bytes(4, "big")}
         )
