@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+import functools
+from collections.abc import Callable, Iterator, Mapping
 from typing import TYPE_CHECKING, Any, NamedTuple
 
 from emulator.history import NEW
@@ -79,13 +80,8 @@ class Judge:
     def __init__(self, engine: ModuleEngine, contract: Contract) -> None:
         self.engine = engine
         self.contract = contract
-        self.names = {
-            enum: contract.enum_names(enum)
-            for enum in ("motion", "assist_op", "preset_item", "restart_cause", "phase")
-        }
-        self.rows: tuple[tuple[Refusal, Check], ...] = tuple(
-            (row, CHECKS[row.name, row.row or ""]) for row in contract.refusals
-        )
+        self.names = _names(contract)
+        self.rows = _rows(contract)
 
     def refuse(self, request: Request) -> Refused | None:
         """The first row that fits, or None: accepted."""
@@ -314,6 +310,18 @@ class Judge:
     def never(self, request: Request) -> int | None:  # noqa: ARG002 - one shape for all checks
         """For what is found out only while executing."""
         return None
+
+
+@functools.lru_cache(maxsize=8)
+def _names(contract: Contract) -> dict[str, Mapping[int, str]]:
+    """Names of enumerated values, one table for all modules of a contract."""
+    return {enum: contract.enum_names(enum) for enum in ("motion", "assist_op", "preset_item")}
+
+
+@functools.lru_cache(maxsize=8)
+def _rows(contract: Contract) -> tuple[tuple[Refusal, Check], ...]:
+    """The refusal table with its checks, one for all modules of a contract."""
+    return tuple((row, CHECKS[row.name, row.row or ""]) for row in contract.refusals)
 
 
 def _history(name: str) -> Check:
