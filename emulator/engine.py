@@ -112,10 +112,9 @@ class ModuleEngine:
         self._pass_time(now_us)
         self._take_unit(data)
 
-    def drop(self, now_us: int, dropped: Dropped) -> None:
-        """A unit that held no bare frame arrived."""
-        self._pass_time(now_us)
-        self._drop(dropped.reason)
+    def count_drops(self, reason: str, count: int) -> None:
+        """So many units were dropped for a reason of the contract, before they came here."""
+        self.drops[reason] = min(self._saturation, self.drops[reason] + count)
 
     def advance(self, now_us: int) -> None:
         """Do all that is due at ``now_us`` or before."""
@@ -143,7 +142,7 @@ class ModuleEngine:
             self.starting_end_us,
             self.lease.end_us,
             self.motions.run.next_us() if self.motions.run else None,
-            min((motion.start_us or 0 for motion in self.motions.scheduled), default=None),
+            self.motions.next_start_us(),
             self.now_us if self._ready_motion() is not None else None,
             min(
                 (m.next_us for m in self.motions.formed if m.is_open and m.next_us is not None), default=None
@@ -177,7 +176,7 @@ class ModuleEngine:
         run = self.motions.run
         if run is not None and (next_us := run.next_us()) is not None and next_us <= now_us:
             self._end_phase(run)
-        for motion in [one for one in self.motions.scheduled if (one.start_us or 0) <= now_us]:
+        for motion in self.motions.due_starts(now_us):
             self._begin_scheduled(motion)
         ready = self._ready_motion()
         if ready is not None:
@@ -273,7 +272,7 @@ class ModuleEngine:
 
     def true_position(self) -> int:
         run = self.motions.run
-        return self.body.position + (run.displacement(self.now_us) if run is not None else 0)
+        return self.body.moved(run.displacement(self.now_us) if run is not None else 0)
 
     def next_event(self) -> int:
         return (self.event_number + 1) % MODULUS
@@ -295,7 +294,7 @@ class ModuleEngine:
         self._after_input()
 
     def _drop(self, reason: str) -> None:
-        self.drops[reason] = min(self._saturation, self.drops[reason] + 1)
+        self.count_drops(reason, 1)
 
     def refuse_silently(self) -> None:
         self.silent_refusals = min(self._saturation, self.silent_refusals + 1)
@@ -572,13 +571,15 @@ class ModuleEngine:
         return motion
 
     def _begin_scheduled(self, motion: Motion) -> None:
+        """A stated start has come: before all that is queued, yet not before the receipt has left."""
         if self.motions.run is not None:
             self.motions.end(motion, "late")
             self.form_alone(motion)
             return
         self.motions.scheduled.remove(motion)
         self.motions.queued.insert(0, motion)
-        self._get_ready(motion)
+        if self.outbox.left >= motion.answer:
+            self._get_ready(motion)
 
     def _get_ready(self, motion: Motion) -> None:
         if self.motions.hold_phase == READY:
@@ -611,7 +612,7 @@ class ModuleEngine:
         motion.energy_mj = 8 * motion.duration_ms
         if run.stop_us is None:
             motion.outcome, motion.cause = self.body.conclude(motion)
-        self.body.position += motion.displacement
+        self.body.position = self.body.moved(motion.displacement)
         self.motions.run = None
         for before, face in zip(faces, self.body.faces, strict=True):
             if before != face.bonded:

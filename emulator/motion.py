@@ -10,10 +10,17 @@ from dataclasses import dataclass, field
 from emulator.config import BONDING, ModuleConfig, MotionConfig
 
 READY, RUNNING, COMMITTED, SETTLING = "ready", "running", "committed", "settling"
-STRENGTH = {"none": 0, "predecessor": 0, "cancel": 1, "lease-end": 2, "fault": 3, "halt": 4}
+# of several causes that end one motion the stronger is told; those not named here count as 0
+STRENGTH = {"cancel": 1, "lease-end": 2, "fault": 3, "halt": 4}
 STOPPED = {"halt": "halted", "fault": "failed"}
 NEVER_BEGUN = {"halt": "halted", "late": "failed", "last-bond": "failed"}
 REPEATS_MS = (200, 400, 800, 1600)
+POSITION_SPAN = 1 << 32
+
+
+def is_stronger(cause: str, told: str) -> bool:
+    """Whether a cause takes the place of the one told so far."""
+    return STRENGTH.get(cause, 0) > STRENGTH.get(told, 0)
 
 
 @dataclass(slots=True)
@@ -121,6 +128,11 @@ class Body:
     def is_last_bond(self, motion: str, face: int) -> bool:
         return motion == "unbond" and self.faces[face].bonded and sum(one.bonded for one in self.faces) == 1
 
+    def moved(self, displacement: int) -> int:
+        """The position after a displacement; the sum wraps as 32 bits do, so that differences stay right."""
+        half = POSITION_SPAN // 2
+        return (self.position + displacement + half) % POSITION_SPAN - half
+
     def conclude(self, motion: Motion) -> tuple[str, str]:
         """Outcome and cause of a motion that nothing stopped."""
         if motion.motion == "bond":
@@ -164,6 +176,14 @@ class MotionTable:
         while waiting + len(self.formed) > self.config.outcomes:
             self.formed.remove(next(one for one in self.formed if one.confirmed))
 
+    def next_start_us(self) -> int | None:
+        """The nearest stated start; a motion that was ended and waits for rest has none any more."""
+        return min((one.start_us or 0 for one in self.scheduled if one.ending is None), default=None)
+
+    def due_starts(self, now_us: int) -> list[Motion]:
+        """The motions whose stated start has come."""
+        return [one for one in self.scheduled if one.ending is None and (one.start_us or 0) <= now_us]
+
     def find(self, source: int, session: int, number: int) -> Motion | None:
         """The motion of a request that is queued, scheduled or running."""
         running = [self.run.motion] if self.run else []
@@ -187,7 +207,7 @@ class MotionTable:
 
     def end(self, motion: Motion, cause: str) -> None:
         """A motion that waits will never begin; the strongest cause is told."""
-        if motion.ending is None or STRENGTH[cause] > STRENGTH[motion.cause]:
+        if motion.ending is None or is_stronger(cause, motion.cause):
             motion.ending = cause
             motion.cause = cause
             motion.outcome = NEVER_BEGUN.get(cause, "cancelled")
@@ -199,14 +219,14 @@ class MotionTable:
             return
         motion = run.motion
         if run.past_return:
-            if STRENGTH[cause] > STRENGTH[motion.interrupted]:
+            if is_stronger(cause, motion.interrupted):
                 motion.interrupted = cause
             return
         if run.stop_us is None:
             run.freeze(now_us)
             run.held = False
             run.stop_us = now_us + 1000 * self.config.stop_ms
-        if STRENGTH[cause] > STRENGTH[motion.cause]:
+        if is_stronger(cause, motion.cause):
             motion.cause = cause
             motion.outcome = STOPPED.get(cause, "cancelled")
 

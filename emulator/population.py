@@ -9,7 +9,7 @@ from __future__ import annotations
 import heapq
 import random
 from collections import OrderedDict
-from collections.abc import Iterator
+from collections.abc import Sequence
 from typing import TypeVar
 
 from emulator.config import ModuleConfig
@@ -34,10 +34,20 @@ class Population:
         self._contract = contract
         self._codec = load_codec(contract)
         rng = random.Random(seed)
-        configs = [ModuleConfig().at(first_address + place) for place in range(modules)]
+        alike = ModuleConfig()
         self._engines = [
-            ModuleEngine(config, Storage(), random.Random(rng.random()), contract) for config in configs
+            ModuleEngine(
+                alike.at(first_address + place), Storage(), random.Random(rng.random()), contract
+            )
+            for place in range(modules)
         ]
+        self._addresses = [engine.address for engine in self._engines]
+        self._places: dict[int, list[int]] = {}
+        for place, address in enumerate(self._addresses):
+            self._places.setdefault(address, []).append(place)
+        # What every module drops alike is counted here once; a module is told when something else reaches it.
+        self._dropped: dict[str, int] = {}
+        self._told: list[dict[str, int]] = [self._dropped] * modules
         self._peers: OrderedDict[Peer, None] = OrderedDict()
         self._origins: OrderedDict[tuple[int, int], Peer] = OrderedDict()
         self._due: list[int | None] = [engine.next_deadline_us() for engine in self._engines]
@@ -51,25 +61,44 @@ class Population:
         for unit in self._codec.split_part(part):
             frame = unit if isinstance(unit, Dropped) else self._codec.frames.unpack(unit)
             if isinstance(frame, Dropped):
-                for engine in self._engines:
-                    engine.drop(now_us, frame)
+                self._drop_everywhere(frame.reason)
                 continue
             assert isinstance(unit, bytes)
             _remember(self._origins, (frame.source, frame.session), peer, ORIGINS_MAX)
-            for place in self._addressed(frame):
+            places = self._addressed(frame)
+            if not places:
+                self._drop_everywhere("other-address")
+            for place in places:
+                self._tell_drops(place)
                 self._engines[place].feed_frame(now_us, unit)
                 self._collect(place)
 
-    def _addressed(self, frame: Frame) -> Iterator[int]:
-        """Everyone hears what goes to many; what goes to one is heard by that one, or dropped by all."""
-        if not self._contract.is_multicast(frame.destination):
-            found = [
-                place for place, engine in enumerate(self._engines) if engine.address == frame.destination
-            ]
-            if found:
-                yield from found
-                return
-        yield from range(len(self._engines))
+    def _addressed(self, frame: Frame) -> Sequence[int]:
+        """Everyone hears what goes to many, and one what goes to one; nobody: it is dropped by all."""
+        if self._contract.is_multicast(frame.destination):
+            return range(len(self._engines))
+        return tuple(self._places.get(frame.destination, ()))
+
+    def _drop_everywhere(self, reason: str) -> None:
+        self._dropped = {**self._dropped, reason: self._dropped.get(reason, 0) + 1}
+
+    def _tell_drops(self, place: int) -> None:
+        told = self._told[place]
+        if told is not self._dropped:
+            self._told[place] = self._dropped
+            for reason, count in self._dropped.items():
+                self._engines[place].count_drops(reason, count - told.get(reason, 0))
+
+    def _note_address(self, place: int) -> None:
+        """A module may have another address than before."""
+        before, now = self._addresses[place], self._engines[place].address
+        if now == before:
+            return
+        self._addresses[place] = now
+        self._places[before].remove(place)
+        if not self._places[before]:
+            del self._places[before]
+        self._places.setdefault(now, []).append(place)
 
     def next_deadline_us(self) -> int | None:
         while self._heap and self._due[self._heap[0][1]] != self._heap[0][0]:
@@ -80,6 +109,7 @@ class Population:
         """Do all that is due."""
         while (due_us := self.next_deadline_us()) is not None and due_us <= now_us:
             _, place = heapq.heappop(self._heap)
+            self._tell_drops(place)
             self._engines[place].advance(now_us)
             self._due[place] = None
             self._collect(place)
@@ -95,6 +125,7 @@ class Population:
 
     def _collect(self, place: int) -> None:
         engine = self._engines[place]
+        self._note_address(place)
         deadline_us = engine.next_deadline_us()
         if deadline_us != self._due[place]:
             self._due[place] = deadline_us
