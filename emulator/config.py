@@ -14,6 +14,7 @@ Milliseconds = Annotated[int, Field(ge=0, le=10_000)]
 Magnitude = Annotated[int, Field(ge=-(1 << 31), lt=1 << 31)]
 Temperature = Annotated[int, Field(ge=-1000, le=3000)]
 UNICAST_LAST = 0xEFFFFFFF
+GROUPS_MAX = 16
 CAPABILITIES = ("queue", "schedule", "telemetry", "groups", "identify", "assist", "energy")
 MOTIONS = ("pivot", "slide", "hinge", "hop", "bond", "unbond")
 BONDING = ("bond", "unbond")
@@ -93,7 +94,7 @@ class ModuleConfig(BaseModel):
     scheduled: int = Field(1, ge=0, le=255)
     outcomes: int = Field(8, ge=4, le=255)
     faults: int = Field(8, ge=8, le=255)
-    groups: int = Field(8, ge=0, le=16)
+    groups: int = Field(8, ge=0, le=GROUPS_MAX)
     answers: int = Field(16, ge=4, le=255)
     receipt_delay_us: int = Field(500, ge=0, le=50_000)
     turnaround_us: int = Field(0, ge=0, le=10_000)

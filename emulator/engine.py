@@ -14,7 +14,7 @@ from emulator.judge import Judge, Refused, Request, examine
 from emulator.lease import Lease
 from emulator.motion import COMMITTED, READY, REPEATS_MS, RUNNING, SETTLING, Body, Motion, MotionTable, Run
 from emulator.outbox import Outbox
-from emulator.storage import PowerCut, Storage
+from emulator.storage import PowerCut, Storage, WriteFailed
 from emulator.telemetry import Telemetry
 from emulator.truth import TruthLog
 from protobench.contract import Contract, State
@@ -22,6 +22,7 @@ from protobench.wire import Codec, Dropped, Frame, load_codec, stuff
 
 MODULUS = 1 << 32
 RESEND_SPACING_US = 100_000
+STORAGE_FAILED = "storage-failed"
 FAULTS_OF_RESTARTS = {"watchdog": "watchdog", "brown-out": "brown-out"}
 
 
@@ -56,14 +57,8 @@ class ModuleEngine:
 
     def _start(self, cause: str) -> None:
         """Everything volatile is new; the epoch is kept before the first frame leaves."""
-        while True:
-            try:
-                self.storage.write(epoch=self.storage.epoch % (MODULUS - 1) + 1)
-                break
-            except PowerCut:
-                cause = "power-on"
+        cause, is_kept = self._keep_epoch(cause)
         config = self.config
-        self.epoch = self.storage.epoch
         self.address = config.address if self.storage.address is None else self.storage.address
         self.restart_cause = cause
         self.state: State = self.contract.states.initial
@@ -91,7 +86,20 @@ class ModuleEngine:
             self.raise_condition(code, survives=True)
         if cause in FAULTS_OF_RESTARTS:
             self.happen(self.contract.fault(FAULTS_OF_RESTARTS[cause]).code)
+        if not is_kept:
+            self.raise_condition(self.contract.fault(STORAGE_FAILED).code, survives=False)
         self._note_change()
+
+    def _keep_epoch(self, cause: str) -> tuple[str, bool]:
+        """Count this start; the cause it reports (power may fail meanwhile), and whether the count is kept."""
+        self.epoch = self.storage.epoch % (MODULUS - 1) + 1
+        try:
+            self.storage.write(epoch=self.epoch)
+        except PowerCut:
+            return self._keep_epoch("power-on")
+        except WriteFailed:
+            return cause, False
+        return cause, True
 
     def restart(self, cause: str) -> None:
         """Restart now; conditions that survive are found again."""
@@ -445,7 +453,11 @@ class ModuleEngine:
     def _receipt(self, request: Request, refused: Refused | None) -> bytes:
         if refused is not None:
             return self.answers.refusal(refused)
-        details = self.executor.execute(request)
+        try:
+            details = self.executor.execute(request)
+        except WriteFailed:
+            self.happen(self.contract.fault(STORAGE_FAILED).code)
+            return self.answers.refusal(self.judge.refusal(STORAGE_FAILED))
         self.extend_lease(request)
         return self.answers.accepted(details)
 
@@ -477,6 +489,10 @@ class ModuleEngine:
             receipt = self.answers.accepted(self.executor.execute(request))
         except PowerCut:
             self.restart("power-on")
+            return
+        except WriteFailed:
+            self.happen(self.contract.fault(STORAGE_FAILED).code)
+            self.refuse_silently()
             return
         self.outbox.put_many(request.key, due_us, self.answers.raw_maker(request.frame, "receipt", receipt))
 

@@ -17,7 +17,7 @@ MODULUS = 1 << 32
 
 
 class Executor:
-    """Executes for one module. ``execute`` may raise PowerCut: power failed, nothing was changed."""
+    """Executes for one module. ``execute`` may raise PowerCut or WriteFailed: nothing was changed."""
 
     def __init__(self, engine: ModuleEngine) -> None:
         self._engine = engine

@@ -91,6 +91,10 @@ class Judge:
                 return Refused(row, key)
         return None
 
+    def refusal(self, name: str) -> Refused:
+        """The refusal of this name, which names no key: for what shows only while executing."""
+        return next(Refused(row, NO_KEY) for row, _ in self.rows if row.name == name)
+
     def is_readable(self, request: Request) -> bool:
         """Whether the form of a body is right, for what is never refused."""
         return not request.frame.flags and request.examined is not None and not request.examined.problems
