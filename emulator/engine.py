@@ -181,9 +181,8 @@ class ModuleEngine:
             self._started_waiting = True
         if self.lease.end_us is not None and self.lease.end_us <= now_us:
             self.end_lease("lease-end")
-        run = self.motions.run
-        if run is not None and (next_us := run.next_us()) is not None and next_us <= now_us:
-            self._end_phase(run)
+        while (run := self.motions.run) is not None and run.is_due(now_us):
+            self._end_phase(run)  # settling and rest fall on one instant
         for motion in self.motions.due_starts(now_us):
             self._begin_scheduled(motion)
         ready = self._ready_motion()

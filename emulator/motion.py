@@ -104,6 +104,10 @@ class Run:
         )
         return self.resumed_us + 1000 * until_ms - self.done_us
 
+    def is_due(self, now_us: int) -> bool:
+        next_us = self.next_us()
+        return next_us is not None and next_us <= now_us
+
 
 @dataclass(slots=True)
 class Face:
