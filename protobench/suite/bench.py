@@ -19,6 +19,7 @@ CONTROLLER_B = 0x00010002
 KEEPER = 0x0001FFFF
 PROBE_WINDOW_MS = 100
 FIRST_CONTACT_MS = 1500
+FIRST_READS = 3
 REAL_SPACING_SLACK_NS = 100_000_000
 
 
@@ -63,12 +64,20 @@ class Bench:
         motions = {}
         for name, number in self.contract.enum_values("motion").items():
             if description["motions"] >> number & 1:
-                answer = self.a.ask("describe-motion", motion=name)
-                if answer.kind == "motion-description":
+                answer = self._read_or_none("describe-motion", motion=name)
+                if answer is not None and answer.kind == "motion-description":
                     motions[name] = _motion_facts(name, answer.fields)
         self.facts.description = dict(description.fields)
         self.facts.motions = motions
         self.facts.items = derive_items(self.contract, description.fields, motions, self.link_items())
+
+    def _read_or_none(self, kind: str, **fields: Any) -> Received | None:
+        """The answer to a read; None when none that keeps to the contract comes, which is for the cases to judge."""
+        for _ in range(FIRST_READS):
+            answer = self.a.answer(self.a.send(kind, **fields))
+            if answer is not None:
+                return answer
+        return None
 
     def link_items(self) -> set[str]:
         """What the link allows: raw ``stream`` bytes, ``gaps`` that mean something, ``virtual`` time."""
@@ -111,9 +120,10 @@ class Bench:
             if answer is not None and answer.kind == "description":
                 return answer
             if self.port.now_ns >= deadline_ns:
+                broken = [violation.reason for violation in self.port.watch.violations]
                 raise NoModule(
                     f"module {self.address} did not describe itself on {self.port.link.name} "
-                    f"within {FIRST_CONTACT_MS} ms"
+                    f"within {FIRST_CONTACT_MS} ms" + (f": {broken[0]}" if broken else "")
                 )
 
     @property

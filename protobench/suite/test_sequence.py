@@ -479,6 +479,9 @@ def test_epoch_power_cut(bench: Bench) -> None:
             f"epoch {epoch}, power lost while the next was written: the next told was {description['epoch']}",
             clause="SEQ-16",
         )
+    cause = a.status()["restart_cause"]
+    if cause != "power-on":
+        raise Failed(f"power lost while starting, and the restart cause is {cause}", clause="AST-02")
 
 
 @case(

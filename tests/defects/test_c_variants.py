@@ -31,6 +31,7 @@ class Variant(NamedTuple):
     catch: str
 
 
+CATCHES = ("one stimulus", "sequence", "timing", "after many", "statistics")
 VARIANTS = [
     Variant(**entry)
     for entry in tomllib.loads((Path(__file__).parent / "c_variants.toml").read_text())["variant"]
@@ -57,6 +58,20 @@ def test_its_case_covers_what_it_breaks(variant: Variant) -> None:
     (info,) = [info for info in list_cases() if info.id == variant.case]
     assert variant.clause in info.clauses
     assert load_contract().clause(variant.clause).observable
+    assert variant.catch in CATCHES
+
+
+def test_every_clause_that_can_be_seen_is_broken_by_one() -> None:
+    visible = {
+        clause.id for clause in load_contract().clauses if clause.observable and clause.subject == "module"
+    }
+    assert visible - {variant.clause for variant in VARIANTS} == set()
+
+
+def test_an_unknown_name_is_refused(program: Path) -> None:
+    tried = subprocess.run([program, "--variant", "sound"], capture_output=True, text=True, timeout=10)
+    assert tried.returncode == 2
+    assert "--variant sound: no such variant" in tried.stderr
 
 
 def test_the_program_knows_exactly_these_variants(program: Path) -> None:

@@ -256,7 +256,8 @@ static void write_motion_description(struct pb_module *module, const struct pb_a
     pb_write_field(body, PB_KEY_MOTION_DESCRIPTION_MAGNITUDE_MIN, motion->magnitude_min);
     pb_write_field(body, PB_KEY_MOTION_DESCRIPTION_MAGNITUDE_MAX, motion->magnitude_max);
     pb_write_field(body, PB_KEY_MOTION_DESCRIPTION_TYPICAL_MS, motion->typical_ms);
-    pb_write_field(body, PB_KEY_MOTION_DESCRIPTION_LONGEST_MS, motion->longest_ms);
+    const unsigned beyond_ms = PB_VARIANT(longest_beyond_limit) ? PB_LIMIT_MOTION_TIME_LONGEST_MAX : 0;
+    pb_write_field(body, PB_KEY_MOTION_DESCRIPTION_LONGEST_MS, motion->longest_ms + beyond_ms);
     pb_write_field(body, PB_KEY_MOTION_DESCRIPTION_NO_RETURN_MS, motion->no_return_ms);
     pb_write_field(body, PB_KEY_MOTION_DESCRIPTION_HALT_CATEGORY, motion->halt_category);
     pb_write_field(body, PB_KEY_MOTION_DESCRIPTION_LEASE_END_CATEGORY, motion->lease_end_category);

@@ -269,6 +269,7 @@
     X(undeclared_motion_described) \
     X(status_hides_motion) \
     X(identify_without_saying) \
+    X(longest_beyond_limit) \
     X(identify_refused_halted) \
     X(position_known_by_bonding) \
     X(restart_before_receipt) \
