@@ -38,7 +38,8 @@ class Model:
         if self.highest is None or 0 < (number - self.highest) % MODULUS < HALF:
             self.highest = number
             self.seen.add(number)
-            self.stored = [one for one in self.stored if one[0] != number][-7:] + [(number, digest)]
+            kept = [one for one in self.stored if one[0] != number]
+            self.stored = [*kept[-7:], (number, digest)]
             return NEW
         stored = dict(self.stored)
         if number in stored:
