@@ -355,7 +355,7 @@ def test_a_zeromq_part_too_long_ends_the_link_and_harms_nothing():
             link.send(b"hello")
             sender, _ = far_end.recv_multipart()
             far_end.send_multipart([sender, b"good"])
-            assert receive(link, 1) == [b"good"]  # first: what is still in the library's pipe may go down with the connection
+            assert receive(link, 1) == [b"good"]  # what waits in the library may go down with the link
             far_end.send_multipart([sender, bytes(65_537)])
             with pytest.raises(PeerClosed, match="part of more than 65536 bytes"):
                 link.receive(link.clock.now_ns() + 2_000 * MS)
