@@ -63,6 +63,18 @@ def test_bad_source(bench: Bench) -> None:
 
 
 @case(
+    "ADR.any-source",
+    "valid",
+    "A request is answered to any unicast address it comes from, the first and the last included.",
+    clauses=["ADR-02", "ACK-02"],
+)
+def test_any_source(bench: Bench) -> None:
+    for source in (1, 2, 0xFFFF, 0x10000, 0x7FFFFFFF, 0x80000000, 0xEFFFFFFF):
+        if source != bench.address:
+            bench.a.answered(bench.a.send("status", source=source), "ADR-02")
+
+
+@case(
     "ADR.own-source",
     "inopportune",
     "A frame from the module's own address is not answered and latches address-conflict, once.",
@@ -75,7 +87,8 @@ def test_own_source(bench: Bench) -> None:
         bench.a.send("status", source=bench.address)
         bench.a.send("move", source=bench.address, motion=1)
         bench.a.silent("a frame from the module's own address", "ADR-03")
-    if not bench.a.status()["fault_latch"]:
+    status = bench.a.status()
+    if not status["fault_latch"] or status["latched_faults"] != 1:
         raise Failed("a frame from the module's own address must latch a fault", clause="ADR-03")
     latched = [entry for entry in bench.fault_entries(bench.a) if entry.latched]
     if [entry.code for entry in latched] != [code]:
@@ -206,8 +219,16 @@ def _check_uniform(delays: list[float], window_ms: float, slack_ms: float) -> No
             )
 
 
-@case("ADR.no-window", "valid", "A window of zero, or none, asks for no answer.", clauses=["ADR-07"])
+@case(
+    "ADR.no-window",
+    "valid",
+    "A window of zero, or none, asks for no answer; the shortest one does.",
+    clauses=["ADR-07"],
+)
 def test_no_window(bench: Bench) -> None:
+    shortest = bench.a.send("probe", to=bench.broadcast, answer_window=1)
+    if bench.a.answer(shortest) is None:
+        raise Failed("a probe with a window of 1 ms was not answered", clause="ADR-07")
     bench.a.send("probe", to=bench.broadcast)
     bench.a.send("probe", to=bench.broadcast, answer_window=0)
     bench.a.silent("a probe to many without a window", "ADR-07", quiet_ms=60)
@@ -395,9 +416,12 @@ def test_groups(bench: Bench) -> None:
         if _probe_answered(bench.a, GROUPS[0]) or not _probe_answered(bench.a, 0xF0000008):
             raise Failed("set-groups must replace the whole membership", clause="ADR-13")
         if bench.facts.has("assist"):
+            _set_groups(bench, list(GROUPS[:count]))
             bench.a.restart()
-            if not _probe_answered(bench.a, 0xF0000008):
-                raise Failed("membership must persist through a restart", clause="ADR-13")
+            if list(bench.a.read("read-groups")["groups"]) != list(GROUPS[:count]):
+                raise Failed("the whole membership must persist through a restart", clause="ADR-13")
+            if not all(_probe_answered(bench.a, group) for group in GROUPS[:count]):
+                raise Failed("membership must count after a restart", clause="ADR-13")
             bench.a.take_lease()
     finally:
         _set_groups(bench, original)

@@ -95,6 +95,8 @@ def test_latch(bench: Bench) -> None:
                 f"{fault.name} ({fault.severity}) left the fault latch {status['fault_latch']}",
                 clause="FLT-03",
             )
+        if status["latched_faults"] != int(latching):
+            raise Failed(f"{fault.name}: {status['latched_faults']} are told to be latched", clause="FLT-03")
         a.assist("withdraw", code=fault.code)
         if a.status()["fault_latch"] != latching:
             raise Failed(f"{fault.name}: the latch changed when its condition went away", clause="FLT-10")
@@ -238,9 +240,10 @@ def test_grant_announces(bench: Bench) -> None:
     a, b = bench.a, bench.b
     a.take_lease()
     codes = [_code(bench, "winding-hot"), _code(bench, "position-lost")]
-    for code in codes:
-        a.assist("raise", code=code)
-        a.confirm(_next(a, code, 400))
+    a.assist("raise", code=codes[0])
+    a.confirm(_next(a, codes[0], 400))
+    a.assist("raise", code=codes[1])
+    b.confirm(_next(a, codes[1], 400))  # no holder yet: the next repeat is 8 s away
     a.accepted("release-lease", clause="LSE-11")
     b.take_lease()
     for code in codes:
@@ -470,6 +473,9 @@ def test_overflow(bench: Bench) -> None:
     page = a.read("read-faults")
     if page["lost"] != 1 or page["total"] != places + 1:
         raise Failed(f"one more than fits: lost {page['lost']}, total {page['total']}", clause="FLT-15")
+    told = a.next_fault(_code(bench, "list-overflow"), (places + 3) * SPACING_MS)
+    if told is None:
+        raise Failed("an overflow of the list was not told", clause="FLT-15")
     codes = [entry.code for entry in bench.fault_entries(a)]
     if _code(bench, "list-overflow") not in codes or _latched(bench, a) != kept:
         raise Failed("an overflow must be recorded and lose nothing that must stay", clause="FLT-15")

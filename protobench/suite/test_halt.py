@@ -448,6 +448,49 @@ def test_prevails(bench: Bench) -> None:
 
 
 @case(
+    "HLT.prevails-order",
+    "inopportune",
+    "Of two things that stop a motion before it is at rest the stronger is its cause, whichever came first.",
+    clauses=["HLT-17"],
+    needs="stoppable and assist",
+)
+def test_prevails_order(bench: Bench) -> None:
+    causes = [("cancel", "cancelled"), ("lease-end", "cancelled"), ("fault", "failed"), ("halt", "halted")]
+    for place, (weaker, _) in enumerate(causes[:-1]):
+        stronger, outcome = causes[place + 1]
+        for order in ((weaker, stronger), (stronger, weaker)):
+            _check_stronger(bench, order, outcome, stronger)
+            bench.end()
+
+
+def _check_stronger(bench: Bench, order: tuple[str, str], outcome: str, cause: str) -> None:
+    a = bench.tester(bench.a.address)
+    a.make_ready()
+    a.hold("running")
+    move = a.move(bench.facts.stoppable().name)
+    bench.port.wait_ms(bench.facts.receipt_ms + 5)
+    frames = [*(_stopping_frame(bench, a, name) for name in order), a.frame("status")]
+    time_ns = bench.port.send(*frames)
+    status = [a.answered(a.sent(frame, time_ns), "ACK-01") for frame in frames][-1]
+    ended = a.outcome(move)
+    a.confirm(ended)
+    # a module that was at rest at once had only the first of the two to end it
+    if status["activity"] == "moving" and (ended["outcome"], ended["cause"]) != (outcome, cause):
+        raise Failed(
+            f"a motion stopped by {' and '.join(order)} ended {ended['outcome']}, cause {ended['cause']}",
+            clause="HLT-17",
+        )
+
+
+def _stopping_frame(bench: Bench, tester: Tester, cause: str) -> bytes:
+    if cause == "fault":
+        code = bench.fault_code("over-current")
+        bench.raised.add(code)
+        return tester.frame("assist", op="raise", code=code)
+    return tester.frame({"lease-end": "release-lease"}.get(cause, cause))
+
+
+@case(
     "HLT.under-load",
     "valid",
     "A halt is executed and answered in time with a full queue, telemetry and a flood before it.",

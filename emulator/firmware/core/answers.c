@@ -99,7 +99,7 @@ void pb_answers_queue_many(struct pb_module *module, const struct pb_answer *ans
     if (PB_VARIANT(no_window_leaves_waiting) && window_ms == 0)
         return;
     struct pb_many_answer *place = &module->answers.many[found - module->answers.many];
-    place->waiting = window_ms > 0;
+    place->waiting = window_ms > (PB_VARIANT(shortest_window_unanswered) ? 1u : 0u);
     place->answer = *answer;
     if (PB_VARIANT(window_answered_at_once))
         window_ms = 1;

@@ -12,7 +12,7 @@ static unsigned strength(uint8_t cause)
     case PB_CAUSE_HALT:
         return 4;
     case PB_CAUSE_FAULT:
-        return 3;
+        return PB_VARIANT(fault_outranks_halt) ? 5 : 3;
     case PB_CAUSE_LEASE_END:
         return 2;
     case PB_CAUSE_CANCEL:

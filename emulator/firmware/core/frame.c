@@ -49,6 +49,8 @@ enum pb_kind_range pb_frame_range(uint8_t kind)
 
 bool pb_address_is_unicast(uint32_t address)
 {
+    if (PB_VARIANT(high_addresses_unanswered) && address >= 0x80000000u)
+        return false;
     return address >= PB_ADDRESS_UNICAST_FIRST && address <= PB_ADDRESS_UNICAST_LAST;
 }
 

@@ -51,7 +51,7 @@ static bool take_epoch(struct pb_module *module)
 void pb_module_start(struct pb_module *module, uint8_t restart_cause)
 {
     while (!take_epoch(module)) /* fails once at most: only assist lets it */
-        restart_cause = PB_RESTART_CAUSE_POWER_ON;
+        restart_cause = PB_VARIANT(cut_start_keeps_cause) ? restart_cause : PB_RESTART_CAUSE_POWER_ON;
     forget(module, restart_cause);
     if (PB_VARIANT(boot_text_on_link))
         module->port.send(module->port.context, (const uint8_t *)"starting\n", 9);

@@ -43,6 +43,8 @@ static void pack(uint8_t *record, const struct pb_settings *settings, uint32_t s
     pb_put(record + AT_EPOCH, 4, settings->epoch);
     pb_put(record + AT_ADDRESS, 4, settings->address);
     record[AT_GROUP_COUNT] = settings->group_count;
+    if (PB_VARIANT(one_group_kept) && settings->group_count > 1)
+        record[AT_GROUP_COUNT] = 1;
     for (unsigned i = 0; i < settings->group_count; i++)
         pb_put(record + AT_GROUPS + 4u * i, 4, settings->groups[i]);
     pb_put(record + AT_CHECK, 4, pb_crc(record, AT_CHECK));

@@ -15,7 +15,8 @@ void pb_faults_announce(struct pb_module *module)
         fault->told = false;
         fault->sendings = 0;
         fault->interval_ms = REPEAT_FIRST_MS;
-        fault->next_send_us = module->now_us;
+        if (!PB_VARIANT(grant_announces_with_next_repeat))
+            fault->next_send_us = module->now_us;
     }
 }
 
@@ -46,6 +47,8 @@ bool pb_faults_confirm(struct pb_module *module, const struct pb_header *header,
 static uint64_t wanted_us(const struct pb_fault *fault)
 {
     if (!fault->used || fault->told)
+        return PB_NEVER;
+    if (PB_VARIANT(overflow_not_told) && fault->code == PB_FAULT_LIST_OVERFLOW)
         return PB_NEVER;
     if (PB_VARIANT(notice_repeated_for_ever))
         return fault->next_send_us;

@@ -45,6 +45,7 @@
     X(address_compared_in_16_bits) \
     X(late_beside_others) \
     X(group_source_answered) \
+    X(high_addresses_unanswered) \
     X(own_address_ignored) \
     X(own_source_faults_again) \
     X(answers_are_answered) \
@@ -54,6 +55,7 @@
     X(window_not_spread) \
     X(window_answered_at_once) \
     X(window_used_to_two_thirds) \
+    X(shortest_window_unanswered) \
     X(halt_to_many_delayed) \
     X(first_to_many_stays) \
     X(no_window_leaves_waiting) \
@@ -64,6 +66,7 @@
     X(old_address_answered) \
     X(address_assigned_while_energized) \
     X(groups_not_counted) \
+    X(one_group_kept) \
     X(any_group_taken) \
     X(assign_to_many_any_epoch) \
     X(assign_to_many_beside_lease) \
@@ -195,6 +198,7 @@
     X(halt_extends_lease) \
     X(halt_answered_unasked) \
     X(first_cause_stays) \
+    X(fault_outranks_halt) \
     X(lease_number_stays) \
     X(lease_taken_over) \
     X(anyone_commands) \
@@ -231,6 +235,7 @@
     X(repeats_go_first) \
     X(grant_tells_nothing) \
     X(grant_announces_untold_only) \
+    X(grant_announces_with_next_repeat) \
     X(clear_clears_all) \
     X(one_clear_opens_latch) \
     X(clear_skips_unknown) \
@@ -245,6 +250,7 @@
     X(overflow_overwrites) \
     X(overflow_forgets_standing) \
     X(overflow_sets_no_latch) \
+    X(overflow_not_told) \
     X(surviving_cause_forgotten) \
     X(notice_repeated_for_ever) \
     X(fault_time_of_reading) \
@@ -274,6 +280,7 @@
     X(position_known_by_bonding) \
     X(restart_before_receipt) \
     X(cut_write_is_made) \
+    X(cut_start_keeps_cause) \
     X(hold_ignored) \
     X(lease_preset_ignored) \
     X(truth_oldest_first) \
