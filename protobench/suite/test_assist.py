@@ -29,7 +29,9 @@ def test_missing_fields(bench: Bench) -> None:
     a.refused("malformed", "assist", op="preset", item="clock", key=8, clause="BDY-08")
     a.refused("malformed", "assist", body=canonical({0: a.epoch}), key=2, clause="BDY-08")
     a.refused("out-of-range", "assist", op=99, key=2, clause="BDY-13")
-    a.refused("out-of-range", "assist", op="raise", code=999, key=3, clause="BDY-13")
+    known = {fault.code for fault in bench.contract.faults}
+    for code in (0, next(code for code in range(1, 256) if code not in known), 999):
+        a.refused("out-of-range", "assist", op="raise", code=code, key=3, clause="BDY-13")
     a.refused("out-of-range", "assist", op="preset", item="counters", value=65_536, key=8, clause="BDY-13")
     a.refused("out-of-range", "assist", op="power-cut", writes=0, key=6, clause="BDY-13")
     a.accepted("assist", op="withdraw", code=bench.fault_code("winding-hot"), clause="AST-01")

@@ -189,6 +189,8 @@ static void take_command(struct pb_module *module, const struct pb_request *requ
 static uint32_t window_ms(const struct pb_request *request)
 {
     const int64_t window = pb_request_number(request, pb_kind_window_key(request->header.kind), 0);
+    if (PB_VARIANT(longest_window_unanswered) && window == PB_LIMIT_ANSWER_WINDOW_MAX)
+        return 0;
     return window >= 0 && window <= PB_LIMIT_ANSWER_WINDOW_MAX ? (uint32_t)window : 0;
 }
 

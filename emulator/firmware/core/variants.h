@@ -56,6 +56,7 @@
     X(window_answered_at_once) \
     X(window_used_to_two_thirds) \
     X(shortest_window_unanswered) \
+    X(longest_window_unanswered) \
     X(halt_to_many_delayed) \
     X(first_to_many_stays) \
     X(no_window_leaves_waiting) \
