@@ -81,7 +81,27 @@ def test_without_room_a_request_is_dropped_before_the_history_and_a_halt_is_not(
     assert of_kind(driver.feed(data, 10), "receipt")[0].message.result == 0
 
 
+def test_a_halt_receipt_keeps_the_turnaround() -> None:
+    driver = Driver(ModuleConfig(receipt_delay_us=3000, turnaround_us=3000))
+    arrival_us = driver.now_us
+    (receipt,) = driver.send("halt", wait_ms=10)
+    assert receipt.time_us - arrival_us == 3000
+
+
 # ---------------------------------------------------------------- to many
+
+
+def test_without_room_for_another_sessions_answer_a_request_to_many_is_dropped() -> None:
+    driver = Driver()
+    for session in range(driver.engine.config.sessions):
+        driver.send("probe", sender=(OWNER[0], session), to=BROADCAST, answer_window=2000, wait_ms=0)
+    driver.send("probe", sender=(OWNER[0], 99), to=BROADCAST, answer_window=2000, wait_ms=0)
+    assert driver.engine.drops["no-room"] == 1
+    driver.send("probe", sender=(OWNER[0], 99), to=BROADCAST, wait_ms=0)  # asks for no answer
+    driver.send("probe", sender=(OWNER[0], 0), to=BROADCAST, answer_window=2000, wait_ms=0)  # replaces
+    driver.send("halt", sender=(OWNER[0], 99), to=BROADCAST, answer_window=2000, wait_ms=0)
+    assert (driver.engine.drops["no-room"], driver.engine.halt_count) == (1, 2)
+    assert len(driver.advance(2100)) == driver.engine.config.sessions
 
 
 def test_answers_to_many_are_spread_evenly_over_their_window() -> None:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from hypothesis import given
 from hypothesis import strategies as st
-from module_driver import OTHER, Driver, of_kind
+from module_driver import OTHER, OWNER, Driver, of_kind
 
 from emulator.history import COPY, NEW, Entry, History
 
@@ -110,6 +110,17 @@ def test_a_command_to_many_is_consumed_and_a_copy_of_it_refused_in_silence() -> 
     number = driver.number
     driver.number = number - 1
     assert driver.refusal("energize") == ("answer-expired", None)
+
+
+def test_what_may_not_go_to_many_and_reads_to_many_consume_no_number() -> None:
+    driver = Driver().ready()
+    number = driver.number
+    driver.send("energize", to=0xFFFFFFFF)
+    driver.send("probe", to=0xFFFFFFFF, answer_window=1)
+    driver.send("probe", sender=OTHER, to=0xFFFFFFFF, answer_window=1)
+    assert {key: kept.highest for key, kept in driver.engine.history.sessions.items()} == {OWNER: number}
+    driver.send("renew-lease", sender=OTHER, to=0xFFFFFFFF, duration=500)
+    assert driver.engine.history.sessions[OTHER].highest == driver.number, "refused, and consumed all the same"
 
 
 def test_a_refused_number_is_consumed_and_reads_and_halts_consume_none() -> None:

@@ -241,6 +241,16 @@ def test_a_bond_that_became_the_last_one_is_not_opened() -> None:
     assert driver.engine.truth.motion_starts == 1
 
 
+@pytest.mark.parametrize("motion", ["bond", "unbond"])
+def test_faces_end_at_the_declared_number(motion: str) -> None:
+    driver = Driver().ready()
+    fields = {"motion": number_of("motion", motion)}
+    faces = len(driver.engine.config.faces)
+    driver.accept("move", face=faces - 1, **fields)
+    assert driver.refusal("move", face=faces, **fields) == ("out-of-range", 4)
+    assert driver.refusal("move", magnitude=1, face=faces, **fields) == ("out-of-range", 3)
+
+
 def test_a_full_queue_is_busy_and_a_full_table_of_outcomes_refuses() -> None:
     driver = Driver(ModuleConfig(queue=2, outcomes=4)).ready()
     for _ in range(3):

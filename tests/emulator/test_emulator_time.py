@@ -167,6 +167,14 @@ def test_counters_stop_at_their_end() -> None:
     assert counters.silent_refusals == 65_535
 
 
+def test_counters_are_preset_to_their_end_and_not_beyond() -> None:
+    driver = Driver()
+    preset(driver, "counters", 65_535)
+    counters = number_of("preset_item", "counters")
+    fields = {"op": number_of("assist_op", "preset"), "item": counters, "value": 65_536}
+    assert driver.refusal("assist", **fields) == ("out-of-range", 8)
+
+
 def test_a_time_exchange_tells_both_instants() -> None:
     driver = Driver(ModuleConfig(receipt_delay_us=2000, turnaround_us=2000))
     arrival = driver.engine.clock()
