@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import random
+from functools import partial
 from typing import Any
 
 from emulator.answers import Answers
@@ -506,7 +507,7 @@ class ModuleEngine:
             ):
                 motion.last_sent_us = self.now_us
                 due_us = self.now_us + self.config.receipt_delay_us
-                self.outbox.put(due_us, lambda: self.answers.outcome(motion))  # noqa: B023 - one motion fits
+                self.outbox.put(due_us, partial(self.answers.outcome, motion))
 
     def _take_confirm(self, frame: Frame) -> None:
         kind = self.contract.kind("confirm")

@@ -133,8 +133,19 @@ class Judge:
             return None
         assert request.kind is not None
         keys = {field.name: field.key for field in request.kind.fields}
-        needs = ASSIST_NEEDS.get(self.names["assist_op"].get(request.fields.op, ""), ())
+        needs = self._assist_needs(request)
         return min((keys[name] for name in needs if getattr(request.fields, name) is None), default=None)
+
+    def _assist_needs(self, request: Request) -> tuple[str, ...]:
+        return ASSIST_NEEDS.get(self.names["assist_op"].get(request.fields.op, ""), ())
+
+    def _assist_ignores(self, request: Request) -> frozenset[str]:
+        """Fields whose values an assist operation does not look at."""
+        if request.name != "assist":
+            return frozenset()
+        return frozenset(name for names in ASSIST_NEEDS.values() for name in names) - set(
+            self._assist_needs(request)
+        )
 
     # ------------------------------------------------------------ fence
 
@@ -192,7 +203,10 @@ class Judge:
 
     def out_of_range(self, request: Request) -> int | None:
         declared = _RANGES.get(request.name)
-        keys = [key for key in (request.lowest(FieldRule.RANGE),) if key is not None]
+        assert request.examined is not None
+        unneeded = self._assist_ignores(request)
+        problems = [problem for problem in request.examined.problems if problem.rule is FieldRule.RANGE]
+        keys = [problem.key for problem in problems if problem.field not in unneeded]
         if declared is not None:
             keys += declared(self, request)
         return min(keys, default=None)

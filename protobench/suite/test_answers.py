@@ -328,6 +328,29 @@ def _check_repeat_in_time(bench: Bench, move: Sent, first: Received, brought: Re
 
 
 @case(
+    "ACK.copy-brings-its-own",
+    "valid",
+    "A copied move brings its own outcome and no other.",
+    clauses=["ACK-10"],
+    needs="travel and virtual",
+)
+def test_copy_brings_its_own(bench: Bench) -> None:
+    a = bench.a
+    a.make_ready(20_000)
+    moves = []
+    for _ in range(2):
+        moves.append(a.move())
+        a.outcome(moves[-1])
+    bench.port.wait_ms(sum(REPEATS_MS) + PATIENCE_MS)
+    bench.port.take_all(lambda received: received.kind == "outcome")
+    a.answered(a.send_frame(moves[0].frame_bytes), "SEQ-03")
+    bench.port.wait_ms(bench.facts.receipt_ms + 20)
+    came = [received.frame.number for received in bench.port.take_all(lambda r: r.kind == "outcome")]
+    if came != [moves[0].number]:
+        raise Failed(f"a copy of move {moves[0].number} brought the outcomes of {came}", clause="ACK-10")
+
+
+@case(
     "ACK.confirm",
     "valid",
     "A confirm gets no answer, ends the repeats and frees the place; the record stays readable.",

@@ -36,6 +36,7 @@ def test_missing_fields(bench: Bench) -> None:
     a.refused("out-of-range", "assist", op="power-cut", writes=0, key=6, clause="BDY-13")
     a.accepted("assist", op="withdraw", code=bench.fault_code("winding-hot"), clause="AST-01")
     a.accepted("assist", op="release", clause="AST-03")
+    a.accepted("assist", op="release", code=70_000, phase=99, writes=0, clause="AST-05")
 
 
 @case(

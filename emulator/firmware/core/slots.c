@@ -155,8 +155,9 @@ void pb_slots_ask_resend(struct pb_module *module, const struct pb_header *heade
 {
     for (unsigned i = 0; i < module->config->outcomes; i++) {
         struct pb_slot *slot = &module->slots.slots[i];
+        const bool is_named = slot->number == header->number || PB_VARIANT(copy_brings_all_outcomes);
         if (slot->state == PB_SLOT_FORMED && slot->source == header->source && slot->session == header->session &&
-            slot->number == header->number) {
+            is_named) {
             slot->resend = true;
             slot->resend_after = receipt;
         }

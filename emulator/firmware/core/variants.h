@@ -115,6 +115,7 @@
     X(copy_brings_no_outcome) \
     X(copies_bring_outcomes_unspaced) \
     X(copy_moves_outcome_repeats) \
+    X(copy_brings_all_outcomes) \
     X(confirm_answered) \
     X(confirm_does_not_end_repeats) \
     X(holder_cannot_confirm) \
