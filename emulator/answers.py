@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 from emulator.config import MotionConfig, capability_bits
 from emulator.judge import NO_KEY, Refused, Request
 from emulator.motion import Motion
-from emulator.outbox import Make
+from emulator.outbox import Make, Written
 from emulator.telemetry import Telemetry
 from protobench.wire import Frame
 
@@ -52,15 +52,19 @@ class Answers:
 
     def maker(self, frame: Frame, kind: str, **fields: Any) -> Make:
         """A function that makes an answer to ``frame`` from these fields."""
-        to = (frame.source, frame.session, frame.number)
-        return lambda: self._frame(kind, to, fields)
+        to, asker = (frame.source, frame.session, frame.number), self._engine.asker
+        return lambda: Written(self._frame(kind, to, fields), asker)
 
     def raw_maker(self, frame: Frame, kind: str, body: bytes) -> Make:
         """The same from a body that is kept."""
         code = self._codec.kind(kind).code
         source, session, number = frame.source, frame.session, frame.number
-        return lambda: self._codec.frames.pack(
-            code, body, source=self._engine.address, destination=source, session=session, number=number
+        asker = self._engine.asker
+        return lambda: Written(
+            self._codec.frames.pack(
+                code, body, source=self._engine.address, destination=source, session=session, number=number
+            ),
+            asker,
         )
 
     # ------------------------------------------------------------ receipts
@@ -95,8 +99,8 @@ class Answers:
         assert request.kind is not None and request.kind.answer is not None  # noqa: PT018 - one fact of the table
         fields = self._reads[request.name](request, t2)
         kind, frame = request.kind.answer, request.frame
-        to = (frame.source, frame.session, frame.number)
-        return lambda: self._frame(kind, to, fields())
+        to, asker = (frame.source, frame.session, frame.number), self._engine.asker
+        return lambda: Written(self._frame(kind, to, fields()), asker)
 
     def _description(self) -> dict[str, Any]:
         engine, config = self._engine, self._engine.config
@@ -246,7 +250,7 @@ class Answers:
 
     # ------------------------------------------------------------ events
 
-    def outcome(self, motion: Motion) -> bytes:
+    def outcome(self, motion: Motion) -> Written:
         """The outcome of a motion, the same bytes each time."""
         fields = {
             "event": motion.event,
@@ -261,9 +265,9 @@ class Answers:
         }
         if self._engine.config.has("energy"):
             fields["energy_mj"] = motion.energy_mj
-        return self._frame("outcome", (motion.source, motion.session, motion.number), fields)
+        return Written(self._frame("outcome", (motion.source, motion.session, motion.number), fields))
 
-    def fault(self, entry: Occurrence) -> bytes:
+    def fault(self, entry: Occurrence) -> Written:
         """A fault event, to the lease holder or to any controller."""
         kind = self._contract.fault_by_code(entry.code)
         holder = self._engine.lease.holder or (self._contract.addresses.any_controller, ANY_SESSION)
@@ -279,9 +283,9 @@ class Answers:
             "time": entry.time,
             "value": entry.value,
         }
-        return self._frame("fault", (*holder, 0), fields)
+        return Written(self._frame("fault", (*holder, 0), fields))
 
-    def telemetry(self, telemetry: Telemetry) -> bytes:
+    def telemetry(self, telemetry: Telemetry) -> Written:
         """One telemetry report."""
         engine = self._engine
         fields = {
@@ -293,9 +297,9 @@ class Answers:
             "supply": engine.config.supply_mv,
             "temperatures": list(engine.config.temperatures),
         }
-        return self._frame("telemetry", (*telemetry.requester, telemetry.number), fields)
+        return Written(self._frame("telemetry", (*telemetry.requester, telemetry.number), fields))
 
-    def started(self) -> bytes:
+    def started(self) -> Written:
         """The one frame that says that starting is over."""
         engine = self._engine
         fields = {
@@ -305,7 +309,7 @@ class Answers:
             "hardware_id": engine.config.hardware_id,
             "nature": self._number("nature", "emulated"),
         }
-        return self._frame("started", (self._contract.addresses.any_controller, ANY_SESSION, 0), fields)
+        return Written(self._frame("started", (self._contract.addresses.any_controller, ANY_SESSION, 0), fields))
 
     def measured(self, code: int) -> int:
         """What the simple body measures when a fault arises."""

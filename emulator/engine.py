@@ -14,7 +14,7 @@ from emulator.history import COPY, NEW, Entry, History
 from emulator.judge import Judge, Refused, Request, examine
 from emulator.lease import Lease
 from emulator.motion import COMMITTED, READY, REPEATS_MS, RUNNING, SETTLING, Body, Motion, MotionTable, Run
-from emulator.outbox import Outbox
+from emulator.outbox import Outbox, Written
 from emulator.storage import PowerCut, Storage, WriteFailed
 from emulator.telemetry import Telemetry
 from emulator.truth import TruthLog
@@ -31,7 +31,8 @@ class ModuleEngine:
     """One module. ``feed`` and ``advance`` take times in microseconds that never go back.
 
     Stream form: ``feed`` bytes, ``take_output`` stuffed frames. Unit form, for datagrams and message parts:
-    ``feed_frame`` bare frames, ``take_frames`` bare frames. One module is used in one form.
+    ``feed_frame`` bare frames, ``take_frames`` bare frames with whose request they answer. One module is used in one
+    form.
     """
 
     def __init__(
@@ -48,7 +49,8 @@ class ModuleEngine:
         self.now_us = 0
         self.drops = dict.fromkeys((drop.name for drop in contract.drops), 0)
         self._decoder = self.codec.stream_decoder()
-        self._output: list[bytes] = []
+        self._output: list[Written] = []
+        self.asker: bytes | None = None
         self._saturation = int(contract.limit("counter_saturation").value or 0)
         self._last_sent_us: int | None = None
         self._survivors: set[int] = set()
@@ -115,10 +117,11 @@ class ModuleEngine:
         for unit in self._decoder.feed(data, now_us * 1000):
             self._take_unit(unit)
 
-    def feed_frame(self, now_us: int, data: bytes) -> None:
-        """A bare frame arrived at ``now_us``."""
+    def feed_frame(self, now_us: int, data: bytes, asker: bytes | None = None) -> None:
+        """A bare frame of a peer arrived at ``now_us``; what answers it names that peer."""
         self._run_until(now_us - 1)
         self._pass_time(now_us)
+        self.asker = asker
         self._take_unit(data)
 
     def count_drops(self, reason: str, count: int) -> None:
@@ -133,14 +136,14 @@ class ModuleEngine:
     def take_output(self) -> list[bytes]:
         """Stuffed frames, each ended by a delimiter, written since the last call."""
         frames, self._output = self._output, []
-        blocks = [stuff(frame) + b"\0" for frame in frames]
+        blocks = [stuff(frame.data) + b"\0" for frame in frames]
         if blocks and (self._last_sent_us is None or self.now_us - self._last_sent_us > 200_000):
             blocks.insert(0, b"\0")
         if blocks:
             self._last_sent_us = self.now_us
         return blocks
 
-    def take_frames(self) -> list[bytes]:
+    def take_frames(self) -> list[Written]:
         """Bare frames written since the last call."""
         frames, self._output = self._output, []
         return frames

@@ -9,8 +9,17 @@ from collections import deque
 from collections.abc import Callable
 from typing import NamedTuple
 
-Make = Callable[[], bytes]
 SessionKey = tuple[int, int]
+
+
+class Written(NamedTuple):
+    """One frame that leaves. ``asker``: the peer whose request it answers, where one was named; None for an event."""
+
+    data: bytes
+    asker: bytes | None = None
+
+
+Make = Callable[[], Written]
 
 
 class Waiting(NamedTuple):
@@ -64,15 +73,15 @@ class Outbox:
         heads = [queue[0].due_us for queue in (self._halts, self._answers) if queue]
         return min([*heads, *(waiting.due_us for waiting in self._many.values())], default=None)
 
-    def take_halts(self, now_us: int) -> list[bytes]:
+    def take_halts(self, now_us: int) -> list[Written]:
         return [waiting.make() for waiting in _due(self._halts, now_us)]
 
-    def take_answers(self, now_us: int) -> list[bytes]:
+    def take_answers(self, now_us: int) -> list[Written]:
         frames = [waiting.make() for waiting in _due(self._answers, now_us)]
         self.left += len(frames)
         return frames
 
-    def take_many(self, now_us: int) -> list[bytes]:
+    def take_many(self, now_us: int) -> list[Written]:
         due = [key for key, waiting in self._many.items() if waiting.due_us <= now_us]
         return [self._many.pop(key).make() for key in due]
 

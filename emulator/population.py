@@ -70,7 +70,7 @@ class Population:
                 self._drop_everywhere("other-address")
             for place in places:
                 self._tell_drops(place)
-                self._engines[place].feed_frame(now_us, unit)
+                self._engines[place].feed_frame(now_us, unit, peer)
                 self._collect(place)
 
     def _addressed(self, frame: Frame) -> Sequence[int]:
@@ -133,7 +133,10 @@ class Population:
                 heapq.heappush(self._heap, (deadline_us, place))
             if len(self._heap) > HEAP_SHARE * len(self._engines) + HEAP_SPARE:
                 self._rebuild()
-        for data in engine.take_frames():
+        for data, asker in engine.take_frames():
+            if asker is not None:
+                self._out.append((asker, data))
+                continue
             frame = self._codec.frames.unpack(data)
             assert isinstance(frame, Frame)
             if frame.destination == self._contract.addresses.any_controller:

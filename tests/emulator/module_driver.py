@@ -93,7 +93,7 @@ class Driver:
 
     def _taken(self) -> list[Seen]:
         seen = []
-        for data in self.engine.take_frames():
+        for data, _ in self.engine.take_frames():
             seen.append(read_frame(self.now_us, data)._replace(is_repeat=data in self._outcomes))
             if seen[-1].kind == "outcome":
                 self._outcomes.add(data)

@@ -11,6 +11,7 @@ import pytest
 import zmq
 from module_driver import ANY_CONTROLLER, BROADCAST, CODEC, CONTRACT, read_frame
 
+from emulator import population
 from emulator import serve as serving
 from emulator.population import ORIGINS_MAX, PEERS_MAX, Population
 from emulator.serve import ServeError, serve
@@ -109,6 +110,41 @@ def test_answers_go_to_who_asked_and_events_to_where_the_session_spoke_last() ->
     told = door.take(b"a", request("assist", 1, 6, epoch=1, op=3, cause=0), 100)
     assert sorted(peer for peer, one in told if one.kind == "started") == [b"a", b"b", b"c"]
     assert {one.frame.destination for _, one in told if one.kind == "started"} == {ANY_CONTROLLER}
+
+
+def test_an_answer_goes_to_who_asked_though_another_spoke_in_its_session_meanwhile() -> None:
+    door = Door(2)
+    door.take(b"a", request("status", 1, 1), 0)
+    door.take(b"a", request("probe", BROADCAST, 2, answer_window=500), 0)
+    door.take(b"b", request("status", 2, 3), 0)
+    told = door.wait(600)
+    assert sorted((peer, one.kind, one.frame.number) for peer, one in told) == [
+        (b"a", "presence", 2), (b"a", "presence", 2), (b"a", "status-report", 1), (b"b", "status-report", 3)
+    ]  # fmt: skip
+
+
+def test_a_halt_receipt_goes_to_who_halted_and_the_outcome_to_where_the_session_spoke_last() -> None:
+    door = Door(1)
+    door.take(b"a", request("take-lease", 1, 1, epoch=1, lease=0, duration=30_000))
+    door.take(b"a", request("reset", 1, 2, epoch=1, lease=1, halt_count=1))
+    door.take(b"a", request("energize", 1, 3, epoch=1, lease=1))
+    door.take(b"a", request("move", 1, 4, epoch=1, lease=1, motion=3, magnitude=5))
+    door.take(b"b", request("halt", 1, 5), 0)
+    door.take(b"c", request("status", 1, 6), 0)
+    told = door.wait(150)
+    assert sorted((peer, one.kind) for peer, one in told) == [
+        (b"b", "halt-receipt"), (b"c", "outcome"), (b"c", "status-report")
+    ]  # fmt: skip
+
+
+def test_an_answer_finds_who_asked_though_its_session_is_forgotten(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr(population, "ORIGINS_MAX", 4)
+    door = Door(1)
+    door.take(b"a", request("status", 1, 1), 0)
+    for session in range(100, 105):
+        door.take(b"b", request("status", 99, 1, session=session), 0)
+    ((peer, seen),) = door.wait(20)
+    assert (peer, seen.frame.number) == (b"a", 1)
 
 
 def test_a_new_address_is_found() -> None:

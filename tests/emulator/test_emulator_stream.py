@@ -45,7 +45,7 @@ def test_stream_vector(vector: dict[str, Any], in_pieces: bool) -> None:
         now_us += 1000 * gaps.get(start, 0)
         engine.feed(now_us, data[start:end])
     engine.advance(now_us + 100_000)
-    answered = [read_frame(0, frame).frame.number for frame in engine.take_frames()]
+    answered = [read_frame(0, one.data).frame.number for one in engine.take_frames()]
     numbers, drops = expectation(vector)
     assert answered == numbers
     assert {name: count for name, count in engine.drops.items() if count} == drops
