@@ -14,6 +14,7 @@ JOBS ?= 2
 
 READY := $(VENV)/.ready
 TOOLS := $(VENV)/.tools
+TEST_TOOLS := $(VENV)/.test-tools
 
 .PHONY: help setup run test lint firmware lock clean
 
@@ -26,6 +27,10 @@ help: ## say what can be made
 # this user may; said clearly where not.
 $(TOOLS): scripts/ensure-tools
 	@scripts/ensure-tools $(PYTHON)
+	@mkdir -p $(VENV) && touch $@
+
+$(TEST_TOOLS): scripts/ensure-tools
+	@scripts/ensure-tools $(PYTHON) tests
 	@mkdir -p $(VENV) && touch $@
 
 $(BIN)/python: | $(TOOLS)
@@ -58,7 +63,7 @@ lint: $(READY) ## ruff, mypy, import-linter
 	$(BIN)/mypy
 	$(BIN)/lint-imports --no-cache
 
-test: $(READY) firmware lint ## everything: firmware, lint, types, layering, tests
+test: $(READY) $(TEST_TOOLS) firmware lint ## everything: firmware, lint, types, layering, tests
 	$(BIN)/python -m pytest -n $(JOBS) -m "not alone" $(PYTEST_OPTIONS)
 	$(BIN)/python -m pytest -m alone $(PYTEST_OPTIONS) || { [ $$? -eq 5 ] && [ -n "$(PYTEST_OPTIONS)" ]; }
 
