@@ -1,17 +1,18 @@
 """Whatever peers send, both modules stay up, stay small, and answer a sound request afterwards.
 
-At least 20,000 frames into each: random bytes, damaged sound frames, sound frames with random kinds and bodies. The C
-module is the sanitized build, so that a wrong access ends it.
+At least 20,000 frames into each: random bytes, damaged frames, sound frames with random kinds and bodies, copies, and
+commands in order, so that motions run and latches are set meanwhile. The C module is the sanitized build, so that a
+wrong access ends it.
 """
 
 from __future__ import annotations
 
 import random
-from collections.abc import Callable, Iterator
+from collections.abc import Callable
 from pathlib import Path
 
-import msgpack
 import pytest
+from hostile_peer import CODEC, HostilePeer, random_frames
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
@@ -20,15 +21,12 @@ from emulator.engine import ModuleEngine
 from emulator.storage import Storage
 from protobench.contract import load_contract
 from protobench.links import Link, MemoryLink, open_link
-from protobench.wire import Frame, load_codec, stuff
+from protobench.wire import Frame, stuff
 
 FRAMES = 20_000
 BATCH = 50
 SEEDS = (1, 2)
 FIRMWARE = Path(__file__).parents[2] / "emulator" / "firmware" / "build-sanitized" / "module-lockstep"
-CODEC = load_codec()
-NUMBERS = [0, 1, 5, 127, 128, 500, 20_000, 65_536, 2**32 - 1, 2**32, 2**64 - 1, -1, -90_000]
-VALUES = [*NUMBERS, True, "x", b"\0" * 8, [1], [], {0: 1}]
 
 
 def new_engine(seed: int = 1) -> ModuleEngine:
@@ -43,36 +41,6 @@ def firmware() -> Link:
     if not FIRMWARE.exists():
         pytest.fail(f"{FIRMWARE} is missing; build it with: make firmware")
     return open_link(f"lockstep:{FIRMWARE}")
-
-
-def random_frames(rng: random.Random) -> Iterator[bytes]:
-    """Bytes as they stand in a stream, delimiter included."""
-    while True:
-        body = bytes(rng.randrange(256) for _ in range(rng.randrange(40)))
-        if rng.random() < 0.7:
-            keys = sorted(rng.sample(range(12), rng.randrange(7)))
-            body = msgpack.packb({key: rng.choice(VALUES) for key in keys})
-        frame = CODEC.frames.pack(
-            rng.choice([rng.randrange(256), rng.randrange(1, 0x30), 0x20, 0x60]),
-            body,
-            source=rng.choice([0x10001, 0x10002, 1, 0, 0xFFFFFFFF, rng.randrange(1 << 32)]),
-            destination=rng.choice([1, 1, 1, 0xFFFFFFFF, 0xF0000001, 2]),
-            session=rng.choice([1, 2, rng.randrange(1 << 32)]),
-            number=rng.choice([rng.randrange(64), rng.randrange(1 << 32)]),
-            flags=rng.choice([0, 0, 0, 0, 1, 255]),
-            version=rng.choice([1, 1, 1, 1, 2, 255]),
-        )
-        match rng.randrange(6):
-            case 0:
-                yield bytes(rng.randrange(256) for _ in range(rng.randrange(300)))
-            case 1:
-                damaged = bytearray(stuff(frame))
-                damaged[rng.randrange(len(damaged))] ^= 1 << rng.randrange(8)
-                yield bytes(damaged) + b"\0"
-            case 2:
-                yield stuff(frame)[: rng.randrange(1, 30)]
-            case _:
-                yield stuff(frame) + b"\0"
 
 
 def answers_soundly(link: Link, address: int, number: int) -> bool:
@@ -94,18 +62,21 @@ def answers_soundly(link: Link, address: int, number: int) -> bool:
 
 @pytest.mark.parametrize("seed", SEEDS)
 @pytest.mark.parametrize("opener", [memory, firmware], ids=["python", "c-sanitized"])
-def test_random_frames(opener: Callable[[], Link], seed: int) -> None:
+def test_noise_between_sound_commands(opener: Callable[[], Link], seed: int) -> None:
     print(f"seed {seed}")
-    rng = random.Random(seed)
-    frames = random_frames(rng)
+    peer = HostilePeer(random.Random(seed))
     with opener() as link:
         for batch in range(FRAMES // BATCH):
-            link.send(b"".join(next(frames) for _ in range(BATCH)))
-            deadline_ns = link.clock.now_ns() + rng.choice([0, 1_000_000, 60_000_000, 2_000_000_000])
-            while link.receive(deadline_ns) is not None:
-                pass
+            for _ in range(BATCH):
+                link.send(peer.bytes_to_send())
+                deadline_ns = link.clock.now_ns() + peer.pause_ns()
+                while (chunk := link.receive(deadline_ns)) is not None:
+                    peer.read(chunk.data, chunk.time_ns)
             if batch % 20 == 0:
                 assert answers_soundly(link, 1, batch), f"no answer after {batch * BATCH} frames, seed {seed}"
+    for command in ("take-lease", "reset", "energize", "move", "clear-faults"):
+        assert peer.results[command, "accepted"] > 20, f"seed {seed}: {peer.results}"
+    assert peer.kinds["outcome"] > 50
 
 
 def test_what_is_kept_for_peers_is_bounded() -> None:
