@@ -48,6 +48,7 @@ class Watch:
     def __init__(self, contract: Contract) -> None:
         self._contract = contract
         self._requests = {kind.name: kind for kind in contract.kinds if kind.class_ in ("read", "command")}
+        self._private = [contract.kind_range(name) for name in ("private", "command_private")]
         status = contract.kind("status-report")
         self._covered = [field.name for field in status.fields if field.key <= STATUS_COVERED_LAST_KEY]
         self._spacing_ns = contract.limit("fault_event_spacing").value * 1_000_000
@@ -101,6 +102,8 @@ class Watch:
             return
         if frame.version != 1 or frame.flags:
             self._violate("FRM-16", f"version {frame.version}, flags 0x{frame.flags:02x} in {reading.words}")
+        if any(low <= frame.kind <= high for low, high in self._private):
+            return  # outside the verdict
         if reading.fields is None:
             self._violate("FRM-16", f"the module sent a frame that breaks the contract: {reading.problem}")
             return

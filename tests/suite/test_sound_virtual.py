@@ -6,8 +6,10 @@ import random
 
 import pytest
 from judging import SEED, expect_sound, firmware, judge
+from private_module import PrivateModule
 from sound_configs import CONFIGS
 
+from emulator.config import ModuleConfig
 from emulator.engine import ModuleEngine
 from emulator.storage import Storage
 from protobench.contract import load_contract
@@ -24,6 +26,13 @@ def test_embedded_module() -> None:
 def test_python_module(name: str) -> None:
     def opener() -> MemoryLink:
         return MemoryLink(ModuleEngine(CONFIGS[name], Storage(), random.Random(SEED), load_contract()))
+
+    expect_sound(judge(opener=opener))
+
+
+def test_a_module_that_uses_the_private_ranges() -> None:
+    def opener() -> MemoryLink:
+        return MemoryLink(PrivateModule(ModuleConfig(), Storage(), random.Random(SEED), load_contract()))
 
     expect_sound(judge(opener=opener))
 
