@@ -51,6 +51,9 @@ def test_a_case_is_well_described(info: CaseInfo) -> None:
         ("copies and not SEQ", {"HLT.copies"}),
         ("(HLT or SEQ) and copies", {"HLT.copies", "SEQ.copies"}),
         ("not not HLT.copies", {"HLT.copies"}),
+        ("hlt.COPIES", {"HLT.copies"}),
+        ("Copies AND NOT seq", {"HLT.copies"}),
+        ("(hlt Or SEQ) and COPIES", {"HLT.copies", "SEQ.copies"}),
     ],
 )
 def test_select(expression: str, wanted: set[str]) -> None:
@@ -61,6 +64,18 @@ def test_select_by_class_and_clause() -> None:
     assert all(info.case_class == "invalid" for info in select(CASES, "invalid"))
     assert all("HLT-03" in info.clauses for info in select(CASES, "HLT-03"))
     assert select(CASES, None) == CASES
+
+
+@pytest.mark.parametrize("word", [info.id for info in CASES[:3]] + ["HLT-03", "Invalid", "REQUIRED", "Crc"])
+def test_capitals_select_as_small_letters_do(word: str) -> None:
+    assert select(CASES, word.lower()) == select(CASES, word.upper()) == select(CASES, word) != []
+
+
+@pytest.mark.parametrize("area", sorted({info.area for info in CASES}))
+def test_an_area_selects_its_cases_and_no_id_that_only_contains_its_letters(area: str) -> None:
+    for word in (area, area.lower()):
+        assert {info.area for info in select(CASES, word)} == {area}
+    assert select(CASES, area.lower()) == [info for info in CASES if info.area == area]
 
 
 @pytest.mark.parametrize("expression", ["", "and", "a or", "not", "(a", "a)", "a b", "a & b", "or a"])
