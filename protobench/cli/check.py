@@ -57,7 +57,8 @@ def check(
     """Judge a module by the conformance cases.
 
     Exit status: 0 nothing failed and all that applies was judged; 1 something failed; 2 wrong use; 3 nothing failed
-    but something was inconclusive; 4 the bench itself failed or nothing ran; 130 interrupted.
+    but something was inconclusive; 4 the bench itself failed or nothing ran; 130 interrupted, with a report of the
+    cases judged before.
 
     Example: protobench check --link run:./my-module --out report
     """
@@ -80,11 +81,15 @@ def check(
         out=out,
         attended=attended,
     )
+    console = Console(stderr=True)
     with ExitStack() as stack:
-        record = judging.judge(options, stack, Console(stderr=True))
+        record = judging.judge(options, stack, console)
     report = judging.write_report(record, out)
+    status = judging.exit_status(record)
+    if status == INTERRUPTED:
+        judging.say_interrupted(record, out, console)
     if as_json:
         typer.echo(json.dumps(report, indent=2))
-    else:
+    elif status != INTERRUPTED:
         judging.summarize(record, out)
-    raise typer.Exit(judging.exit_status(record))
+    raise typer.Exit(status)

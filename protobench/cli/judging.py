@@ -67,7 +67,10 @@ def make_options(*, ics: Path | None, virtual: bool, **options: Any) -> RunOptio
 
 
 def judge(options: RunOptions, stack: ExitStack, console: Console) -> RunRecord:
-    """Run the suite; what keeps it from beginning ends the command with a message and the right status."""
+    """Run the suite; what keeps it from beginning ends the command with a message and the right status.
+
+    A run that is interrupted comes back with what it has.
+    """
     if options.attended:
         console.print(CAUTIONS, highlight=False)
     log = _open_log(options, stack)
@@ -80,8 +83,10 @@ def judge(options: RunOptions, stack: ExitStack, console: Console) -> RunRecord:
         message, status = str(error), check.FAILED
     except (NoModule, LinkError) as error:
         message, status = str(error), check.BENCH_FAILED
+    except run.Interrupted as interrupted:
+        return interrupted.record
     except KeyboardInterrupt:
-        message, status = "interrupted; a module that was being judged has been sent a halt", check.INTERRUPTED
+        message, status = "interrupted before the first case; nothing was judged", check.INTERRUPTED
     stack.close()
     console.print(message, highlight=False, soft_wrap=True, markup=False)
     raise typer.Exit(status)
@@ -127,8 +132,21 @@ def summarize(record: RunRecord, out: Path | None) -> None:
         )
 
 
+def say_interrupted(record: RunRecord, out: Path | None, console: Console) -> None:
+    """What an interrupted run has done and left, on standard error; its results are no results of a run."""
+    report = f"; partial report: {out}/report.json, {out}/junit.xml, {out}/conformance.log" if out else ""
+    console.print(
+        f"interrupted after {len(record.cases)} cases; the module has been sent a halt{report}",
+        highlight=False,
+        soft_wrap=True,
+        markup=False,
+    )
+
+
 def exit_status(record: RunRecord) -> int:
-    """0 to 4, as ``protobench check --help`` says."""
+    """0 to 4 or 130, as ``protobench check --help`` says."""
+    if record.stopped == run.INTERRUPTED:
+        return check.INTERRUPTED
     if record.count("fail"):
         return check.FAILED
     judged = record.count("pass") + record.count("inconc")

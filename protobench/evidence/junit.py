@@ -28,7 +28,10 @@ def junit_xml(record: RunRecord) -> bytes:
     root = ET.Element("testsuites", {"name": "protobench"})
     suite = ET.SubElement(root, "testsuite", {"name": f"protobench {record.contract}", **counts})
     properties = ET.SubElement(suite, "properties")
-    for name, value in {"seed": record.seed, **record.environment}.items():
+    facts: dict[str, object] = {"seed": record.seed, **record.environment}
+    if record.stopped is not None:
+        facts["stopped"] = record.stopped
+    for name, value in facts.items():
         ET.SubElement(properties, "property", {"name": name, "value": _clean(str(value))})
     for case in record.cases:
         _add_case(suite, case)

@@ -1,6 +1,6 @@
 """The ways to a module: one interface, ``Link``, in virtual or real time. ``open_link`` takes text."""
 
-from protobench.links.address import is_virtual, open_link, parse_address
+from protobench.links.address import is_here, is_virtual, open_link, parse_address
 from protobench.links.base import Chunk, Clock, Discarded, Framing, Limits, Link, MonotonicClock, VirtualClock
 from protobench.links.errors import (
     BadAddress,
@@ -47,6 +47,7 @@ __all__ = [
     "PeerFault",
     "SendStalled",
     "VirtualClock",
+    "is_here",
     "is_virtual",
     "open_link",
     "parse_address",

@@ -23,7 +23,7 @@ from functools import partial
 from typing import NamedTuple
 
 from protobench.links.base import DEFAULT_LIMITS, Limits, Link
-from protobench.links.errors import BadAddress, NoVirtualTime
+from protobench.links.errors import BadAddress, LinkError, NoVirtualTime
 from protobench.links.lockstep import LockstepLink
 from protobench.links.process import ProcessLink
 from protobench.links.serial_port import DEFAULT_BAUD, SerialLink, SerialUrlLink
@@ -60,6 +60,22 @@ def open_link(
 def is_virtual(text: str) -> bool:
     """Whether the link that ``text`` names runs in virtual time."""
     return text.startswith("lockstep:")
+
+
+def is_here(text: str) -> bool:
+    """Whether the far end that ``text`` names is certainly on this machine and no device; opens nothing.
+
+    A host counts when every address its name has is loopback; a name that is not known does not. Raises BadAddress.
+    """
+    parse_address(text)
+    for prefix in _HOSTS:
+        if text.startswith(prefix):
+            host, port = _host_port(_Address(text, text[len(prefix) :], None, DEFAULT_LIMITS))
+            try:
+                return all(is_loopback(ip) for _, ip in resolve(text, host, port, socket.SOCK_STREAM))
+            except LinkError:
+                return False
+    return not text.startswith("serial:")
 
 
 def parse_address(text: str, *, rng: random.Random | None = None, limits: Limits = DEFAULT_LIMITS) -> Opener:
@@ -163,6 +179,7 @@ def _number(text: str, what: str, digits: str, low: int, high: int) -> int:
     return int(digits)
 
 
+_HOSTS = ("tcp://", "udp://", "zmq+tcp://")
 _PARSERS: dict[str, Callable[[_Address], Opener]] = {
     "run:": _parse_command,
     "lockstep:": _parse_command,

@@ -14,7 +14,17 @@ from protobench.suite.port import Log
 from protobench.suite.selection import select
 from protobench.suite.session import NeedsAttendance, Session, StatementDiffers
 
-__all__ = ["NeedsAttendance", "StatementDiffers", "list_cases", "run_suite"]
+__all__ = ["INTERRUPTED", "Interrupted", "NeedsAttendance", "StatementDiffers", "list_cases", "run_suite"]
+
+INTERRUPTED = "interrupted"
+
+
+class Interrupted(KeyboardInterrupt):
+    """Someone ended the run. ``record`` holds the cases that were judged before; the module was sent a halt."""
+
+    def __init__(self, record: RunRecord) -> None:
+        super().__init__(INTERRUPTED)
+        self.record = record
 
 
 def list_cases(level: str = "recommended", only: str | None = None) -> list[CaseInfo]:
@@ -36,22 +46,31 @@ def run_suite(options: RunOptions, observer: Observer | None = None, log: Log | 
     """Judge a module by the selected cases.
 
     Raises NeedsAttendance, StatementDiffers, NoModule, LinkError, ContractError before the first case. A run that
-    cannot go on keeps what it has and says why in ``stopped``. When it is interrupted the module is sent a halt.
+    cannot go on keeps what it has and says why in ``stopped``. When it is interrupted the module is sent a halt, and
+    Interrupted is raised with what it has.
     """
     selected = list_cases(options.level, options.only)
     with Session(options, log) as session:
         record = session.record()
-        if observer is not None:
-            observer.selected(len(selected))
-        for index, info in enumerate(selected):
-            if observer is not None:
-                observer.case_begins(info.id, index)
-            try:
-                judged = session.judge(info)
-            except Exception as error:  # noqa: BLE001 - the far end cannot be opened again; its kind does not matter
-                record.stopped = f"after {index} cases, in {info.id}: {error}"
-                break
-            record.cases.append(judged)
-            if observer is not None:
-                observer.case_ends(judged)
+        try:
+            _judge(session, selected, record, observer)
+        except KeyboardInterrupt:
+            record.stopped = INTERRUPTED
+            raise Interrupted(record) from None
     return record
+
+
+def _judge(session: Session, selected: list[CaseInfo], record: RunRecord, observer: Observer | None) -> None:
+    if observer is not None:
+        observer.selected(len(selected))
+    for index, info in enumerate(selected):
+        if observer is not None:
+            observer.case_begins(info.id, index)
+        try:
+            judged = session.judge(info)
+        except Exception as error:  # noqa: BLE001 - the far end cannot be opened again; its kind does not matter
+            record.stopped = f"after {index} cases, in {info.id}: {error}"
+            break
+        record.cases.append(judged)
+        if observer is not None:
+            observer.case_ends(judged)

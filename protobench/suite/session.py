@@ -18,7 +18,7 @@ from protobench.judge import (
     RunRecord,
     Verdict,
 )
-from protobench.links import Link, LinkError, open_link
+from protobench.links import Link, LinkError, is_here, open_link
 from protobench.suite.bench import Bench
 from protobench.suite.case import CaseInfo
 from protobench.suite.options import RunOptions
@@ -68,10 +68,9 @@ class Session:
     # ------------------------------------------------------------ opening
 
     def _open(self) -> Bench:
-        if (self.options.link or "").startswith(
-            "serial:"
-        ):  # opening one may already restart what is behind it
-            self._need_attendance(self.options.link)
+        named = self.options.link if self.options.opener is None else None
+        if named is not None and not is_here(named):  # opening a device may already restart what is behind it
+            self._need_attendance(named)
         link = self._open_link()
         try:
             if not link.loopback:
@@ -89,7 +88,7 @@ class Session:
             raise
         return bench
 
-    def _need_attendance(self, name: str | None) -> None:
+    def _need_attendance(self, name: str) -> None:
         if not self.options.attended:
             raise NeedsAttendance(
                 f"{name} is a serial device or another host: what is behind it may move. "

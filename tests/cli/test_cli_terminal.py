@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import os
 import pty
 import shlex
@@ -9,6 +10,7 @@ import signal
 import subprocess
 import sys
 import time
+import xml.etree.ElementTree as ET
 from pathlib import Path
 
 import pytest
@@ -46,8 +48,11 @@ def test_ctrl_c_ends_with_130_and_a_halt(tmp_path: Path) -> None:
     script, log = tmp_path / "recorder.py", tmp_path / "sent"
     script.write_text(RECORDER)
     link = "run:" + shlex.join((sys.executable, str(script), str(log), str(FIRMWARE)))
+    out_folder = tmp_path / "report"
     process = subprocess.Popen(
-        [*PROGRAM, "check", "--link", link, "--only", "MOT"], stdout=subprocess.PIPE, stderr=subprocess.PIPE
+        [*PROGRAM, "check", "--link", link, "--only", "MOT", "--out", str(out_folder)],
+        stdout=subprocess.PIPE,
+        stderr=subprocess.PIPE,
     )
     try:
         wait_for(log, 4000, process)
@@ -57,13 +62,22 @@ def test_ctrl_c_ends_with_130_and_a_halt(tmp_path: Path) -> None:
         process.kill()
     assert process.returncode == 130, errors.decode()
     assert out == b""
-    assert "interrupted" in errors.decode()
+    assert "interrupted after" in errors.decode()
+    assert f"partial report: {out_folder}/report.json, {out_folder}/junit.xml" in errors.decode()
     assert "Traceback" not in errors.decode()
     codec = load_codec()
     units = codec.split_part(b"\0" + log.read_bytes())
     last = codec.frames.unpack(units[-1]) if isinstance(units[-1], bytes) else units[-1]
     assert isinstance(last, Frame)
     assert codec.kinds_by_code[last.kind].name == "halt"
+    report = json.loads((out_folder / "report.json").read_text())
+    assert report["stopped"] == "interrupted"
+    judged = [case["id"] for case in report["cases"]]
+    assert judged == [info.id for info in list_cases("required", "MOT")][: len(judged)]
+    suite = ET.parse(out_folder / "junit.xml").getroot().find("testsuite")
+    assert suite is not None
+    assert [case.attrib["name"] for case in suite.iter("testcase")] == judged
+    assert suite.find("properties/property[@name='stopped']").attrib["value"] == "interrupted"  # type: ignore[union-attr]
 
 
 def on_terminal(*arguments: str) -> tuple[int, bytes]:

@@ -88,6 +88,16 @@ def test_a_log_level_that_is_none() -> None:
     assert "'loud': one of debug, info, warning, error" in words(done.stderr)
 
 
+@pytest.mark.parametrize("link", ["tcp://192.0.2.1:9", "udp://192.0.2.1:9", "zmq+tcp://nobody.invalid:9"])
+def test_attendance_is_asked_before_another_host_is_looked_for(link: str) -> None:
+    """192.0.2.0/24 and .invalid are nobody's (RFC 5737, RFC 6761)."""
+    done = invoke("check", "--link", link)
+    assert done.exit_code == 2, done.stderr
+    message = words(done.stderr)
+    assert f"{link} is a serial device or another host" in message
+    assert "Nothing was sent. Give --attended" in message
+
+
 def test_nothing_is_sent_to_a_serial_device_unattended() -> None:
     ours, theirs = pty.openpty()
     try:

@@ -28,6 +28,7 @@ from protobench.links import (
     NoVirtualTime,
     PeerClosed,
     SendStalled,
+    is_here,
     is_virtual,
     open_link,
     parse_address,
@@ -142,6 +143,36 @@ def test_any_text_is_an_address_or_refused(prefix, rest):
         assert error.text == prefix + rest
     else:
         assert callable(opener)
+
+
+@pytest.mark.parametrize(
+    ("text", "here"),
+    [
+        ("run:./module", True),
+        ("lockstep:./module", True),
+        ("zmq+ipc:///nowhere", True),
+        ("tcp://127.0.0.1:1", True),
+        ("tcp://localhost:1", True),
+        ("udp://127.8.9.10:1", True),
+        ("zmq+tcp://[::1]:1", True),
+        ("tcp://[::ffff:127.0.0.1]:1", True),
+        ("tcp://192.0.2.1:1", False),  # RFC 5737: for documentation, nobody's
+        ("udp://[2001:db8::1]:1", False),  # RFC 3849: likewise
+        ("zmq+tcp://192.0.2.1:1", False),
+        ("tcp://[::ffff:192.0.2.1]:1", False),
+        ("tcp://nobody.invalid:1", False),  # RFC 6761: never a name
+        ("serial:/dev/nowhere", False),
+        ("serial:loop://", False),
+    ],
+)
+def test_what_is_here_is_known_without_opening_it(text, here):
+    assert is_here(text) is here
+
+
+@pytest.mark.parametrize("text", ["tcp://127.0.0.1", "serial:", "pigeon:", "run:"])
+def test_what_is_no_address_is_nowhere(text):
+    with pytest.raises(BadAddress):
+        is_here(text)
 
 
 @pytest.mark.parametrize(
