@@ -20,6 +20,7 @@ KEEPER = 0x0001FFFF
 PROBE_WINDOW_MS = 100
 FIRST_CONTACT_MS = 1500
 FIRST_READS = 3
+STARTING_POLL_MS = 20
 REAL_SPACING_SLACK_NS = 100_000_000
 
 
@@ -70,6 +71,16 @@ class Bench:
         self.facts.description = dict(description.fields)
         self.facts.motions = motions
         self.facts.items = derive_items(self.contract, description.fields, motions, self.link_items())
+        self._wait_started()
+
+    def _wait_started(self) -> None:
+        """Opening a link may start what is behind it; while it starts it refuses what a case's preamble asks."""
+        deadline_ns = self.port.now_ns + (self.facts.starting_ms + FIRST_CONTACT_MS) * 1_000_000
+        while self.port.now_ns < deadline_ns:
+            status = self._read_or_none("status")
+            if status is None or status.get("activity") != "starting":
+                return
+            self.port.wait_ms(STARTING_POLL_MS)
 
     def _read_or_none(self, kind: str, **fields: Any) -> Received | None:
         """The answer to a read; None when none that keeps to the contract comes, which is for the cases to judge."""
@@ -134,6 +145,11 @@ class Bench:
     def longest_ms(self) -> int:
         """Longest declared duration of any motion, in ms."""
         return max((motion.longest_ms for motion in self.facts.motions.values()), default=0)
+
+    def other_address(self, distance: int = 1) -> int:
+        """A unicast address that is not the module's, so many places after it."""
+        last = self.contract.addresses.unicast_last
+        return (self.address - 1 + distance) % last + 1
 
     def is_many(self, address: int) -> bool:
         return self.contract.is_multicast(address)

@@ -27,9 +27,10 @@ class MotionFacts:
 
     @property
     def magnitude(self) -> int:
-        """A magnitude to ask for: half of the greatest, or of the least where the greatest is no motion."""
-        half = self.magnitude_max // 2
-        return half if half else self.magnitude_min // 2
+        """A magnitude to ask for, neither zero nor an end of the range where it can be helped."""
+        low, high = self.magnitude_min, self.magnitude_max
+        wanted = (high // 2, low // 2, (low + high) // 2, high, low)
+        return next((value for value in wanted if value and low <= value <= high), 0)
 
     @property
     def stoppable_ms(self) -> int:

@@ -22,7 +22,7 @@ FALSE_FAIL = 1e-7
     clauses=["ADR-01"],
 )
 def test_other_address(bench: Bench) -> None:
-    others = [0, bench.address + 1, 0xEFFFFFFF, 0xF0000001, 0xFFFFFFFE]
+    others = [0, bench.other_address(), bench.other_address(0xEFFFFFFE), 0xF0000001, 0xFFFFFFFE]
     others += [bench.address ^ 1 << bit for bit in (7, 8, 15, 16, 23, 24)]
     with expect_drops(bench, {"other-address": len(others)}, "ADR-01"):
         for address in others:
@@ -38,7 +38,7 @@ def test_other_address(bench: Bench) -> None:
 )
 def test_asked_after_other(bench: Bench) -> None:
     for _ in range(5):
-        bench.a.send("status", to=bench.address + 1)
+        bench.a.send("status", to=bench.other_address())
         sent = bench.a.send("status")
         if bench.a.answer(sent, bench.facts.receipt_ms + PATIENCE_REAL_MS + bench.port.u_ms) is None:
             raise Failed("a request after one for another module was not answered in time", clause="ACK-03")
@@ -318,7 +318,7 @@ def _assign(bench: Bench, address: int, window_ms: int = 20) -> Received | None:
     clauses=["ADR-12", "ADR-15", "ADR-10"],
 )
 def test_assign(bench: Bench) -> None:
-    old, new = bench.address, bench.address ^ 0x00050000
+    old, new = bench.address, bench.other_address(0x00050000)
     try:
         receipt = _assign(bench, new)
         if receipt is None or receipt.get("result") != "accepted" or receipt.frame.source != new:
@@ -347,7 +347,7 @@ def test_assign(bench: Bench) -> None:
 def test_assign_other(bench: Bench) -> None:
     own = bench.facts.description["hardware_id"]
     other = own[:7] + bytes([own[7] ^ 1])
-    options = {"to": bench.broadcast, "address": bench.address + 9, "answer_window": 10}
+    options = {"to": bench.broadcast, "address": bench.other_address(9), "answer_window": 10}
     with expect_silent_refusals(bench, 2, "ADR-11"):
         bench.a.send("assign-address", hardware_id=other, **options)
         bench.a.send("assign-address", hardware_id=own, epoch=bench.a.epoch + 1, **options)
@@ -365,12 +365,12 @@ def test_assign_state(bench: Bench) -> None:
     own = bench.facts.description["hardware_id"]
     bench.a.make_ready()
     bench.a.refused(
-        "energized", "assign-address", hardware_id=own, address=bench.address + 9, clause="ADR-12"
+        "energized", "assign-address", hardware_id=own, address=bench.other_address(9), clause="ADR-12"
     )
     bench.a.accepted("de-energize", clause="STA-10")
     with expect_silent_refusals(bench, 1, "ADR-16"):
         bench.b.send(
-            "assign-address", to=bench.broadcast, hardware_id=own, address=bench.address + 9, answer_window=10
+            "assign-address", to=bench.broadcast, hardware_id=own, address=bench.other_address(9), answer_window=10
         )
         bench.port.wait_ms(40)
     bench.a.silent("an assignment while another holds the lease", "ADR-16")
@@ -378,7 +378,7 @@ def test_assign_state(bench: Bench) -> None:
         "out-of-range",
         "assign-address",
         hardware_id=own[::-1],
-        address=bench.address + 9,
+        address=bench.other_address(9),
         key=2,
         clause="BDY-13",
     )

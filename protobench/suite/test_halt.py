@@ -397,7 +397,7 @@ def test_not_included(bench: Bench) -> None:
     a = bench.a
     count = a.status()["halt_count"]
     with expect_drops(bench, {"other-address": 3}, "ADR-01"):
-        for address in (bench.address + 1, 0, 0xFFFFFFFE):
+        for address in (bench.other_address(), 0, 0xFFFFFFFE):
             a.send("halt", to=address)
         a.silent("a halt for another address", "ADR-01")
     damaged = a.frame("halt")
@@ -506,7 +506,7 @@ def test_under_load(bench: Bench) -> None:
         a.move()
         for _ in range(min(4, 1 + bench.facts.description["queue"], bench.facts.description["outcomes"]))
     ]
-    flood = [a.frame("status", to=bench.address + 1) for _ in range(200)]
+    flood = [a.frame("status", to=bench.other_address()) for _ in range(200)]
     bench.port.send(*flood)
     sent = a.send("halt")
     receipt = a.answered(sent, "HLT-03")

@@ -105,7 +105,7 @@ def test_sessions(bench: Bench) -> None:
 def test_halt_in_flood(bench: Bench) -> None:
     a = bench.a
     a.make_ready()
-    others = [a.frame("status", to=bench.address + 1) for _ in range(100)]
+    others = [a.frame("status", to=bench.other_address()) for _ in range(100)]
     halt = a.frame("halt")
     time_ns = bench.port.send(*others, halt, *others)
     receipt = a.answer(a.sent(halt, time_ns), 1000 + bench.port.u_ms)

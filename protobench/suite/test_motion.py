@@ -11,6 +11,7 @@ from protobench.suite.facts import BONDING, MotionFacts
 from protobench.suite.port import Received, Sent
 from protobench.suite.tester import Tester, answer_words, is_outcome_of
 
+LEASE_MS = 30_000  # the longest
 SHARE = 0.01  # of the magnitude, by which a displacement may differ
 MODULUS = 1 << 32
 
@@ -33,7 +34,7 @@ def test_each_motion(bench: Bench) -> None:
     for facts in bench.facts.motions.values():
         if facts.name in BONDING:
             continue
-        for magnitude in sorted({facts.magnitude_min, facts.magnitude_max, facts.magnitude_max // 3}):
+        for magnitude in sorted({facts.magnitude_min, facts.magnitude_max, facts.magnitude}):
             position = a.status()["position"]
             move = a.move(facts.name, magnitude=magnitude)
             outcome = a.ended(move, "done", "none", "MOT-04")
@@ -161,8 +162,9 @@ def test_range(bench: Bench) -> None:
 )
 def test_queue_order(bench: Bench) -> None:
     a = bench.a
-    a.make_ready(20_000)
-    count = min(3, 1 + bench.facts.description["queue"], bench.facts.description["outcomes"])
+    a.make_ready(LEASE_MS)
+    fitting = max(2, (LEASE_MS - 5000) // bench.facts.travel().typical_ms)
+    count = min(3, 1 + bench.facts.description["queue"], bench.facts.description["outcomes"], fitting)
     moves = [a.move() for _ in range(count)]
     waiting = a.status()["queued"]
     if not count - 2 <= waiting <= count - 1:

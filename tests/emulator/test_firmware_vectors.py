@@ -51,7 +51,6 @@ def module() -> Iterator[Bench]:
     with open_link(f"lockstep:{FIRMWARE} --hardware-id {HARDWARE_ID}") as link:
         bench = Bench(link, CONTRACT, CODEC, seed=1)
         bench.discover(1)
-        bench.port.wait_ms(bench.facts.starting_ms)
         yield bench
 
 

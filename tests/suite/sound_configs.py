@@ -33,6 +33,7 @@ def without(capability: str) -> ModuleConfig:
 
 
 HOP = MotionConfig(magnitude_min=1000, magnitude_max=60_000, typical_ms=140, longest_ms=250, no_return_ms=20)
+BACKWARDS = MotionConfig(magnitude_min=-5000, magnitude_max=-100, typical_ms=100, longest_ms=200)
 SLIDE = MotionConfig(magnitude_min=0, magnitude_max=7, typical_ms=60, longest_ms=61)
 
 CONFIGS: dict[str, ModuleConfig] = {
@@ -57,5 +58,15 @@ CONFIGS: dict[str, ModuleConfig] = {
         motions=motions(typical_ms=2, longest_ms=3, no_return_ms=lambda old: 1 if old else 0), stop_ms=1
     ),
     "starts-at-once": variant(starting_ms=1, declared_starting_ms=1),
+    "very-long-motions": variant(
+        motions=motions(typical_ms=9000, longest_ms=10_000, no_return_ms=lambda old: 8000 if old else 0)
+    ),
+    "starts-late": variant(starting_ms=1000, declared_starting_ms=1000),
+    "one-sided-range": variant(motions={"hinge": BACKWARDS}),
+    "only-bonds": variant(motions={name: BASE.motions[name] for name in ("bond", "unbond")}),
+    "highest-address": variant(address=0xEFFFFFFF),
+    "greatest-sizes": variant(
+        sessions=255, numbers=32, queue=255, outcomes=255, faults=255, groups=16, scheduled=255, answers=255
+    ),
     "power-off-at-once": variant(motions=motions(halt_category=0, fault_category=0)),
 }

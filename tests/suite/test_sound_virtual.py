@@ -6,8 +6,8 @@ import random
 
 import pytest
 from judging import SEED, expect_sound, firmware, judge
-from private_module import PrivateModule
 from sound_configs import CONFIGS
+from sound_engines import ENGINES
 
 from emulator.config import ModuleConfig
 from emulator.engine import ModuleEngine
@@ -30,9 +30,10 @@ def test_python_module(name: str) -> None:
     expect_sound(judge(opener=opener))
 
 
-def test_a_module_that_uses_the_private_ranges() -> None:
+@pytest.mark.parametrize("name", ENGINES)
+def test_python_module_that_takes_other_freedoms(name: str) -> None:
     def opener() -> MemoryLink:
-        return MemoryLink(PrivateModule(ModuleConfig(), Storage(), random.Random(SEED), load_contract()))
+        return MemoryLink(ENGINES[name](ModuleConfig(), Storage(), random.Random(SEED), load_contract()))
 
     expect_sound(judge(opener=opener))
 
