@@ -35,6 +35,14 @@ def check(
             help="Conformance statement (TOML): what the supplier says the module has.",
         ),
     ] = None,
+    deviations: Annotated[
+        Path | None,
+        typer.Option(
+            exists=True,
+            dir_okay=False,
+            help="Known deviations (TOML): failures expected until a date, each with case, reason and owner.",
+        ),
+    ] = None,
     only: Annotated[
         str | None,
         typer.Option(help="Cases to judge: words of ids, areas, classes or clause ids, with and, or, not."),
@@ -56,7 +64,8 @@ def check(
 ) -> None:
     """Judge a module by the conformance cases.
 
-    Exit status: 0 nothing failed and all that applies was judged; 1 something failed; 2 wrong use; 3 nothing failed
+    Exit status: 0 nothing failed and all that applies was judged; 1 something failed that is no
+    known deviation, or the list of them is wrong; 2 wrong use; 3 nothing failed
     but something was inconclusive; 4 the bench itself failed or nothing ran; 130 interrupted, with a report of the
     cases judged before.
 
@@ -81,9 +90,10 @@ def check(
         out=out,
         attended=attended,
     )
+    listed = judging.read_deviations(deviations)
     console = Console(stderr=True)
     with ExitStack() as stack:
-        record = judging.judge(options, stack, console)
+        record = judging.beside(judging.judge(options, stack, console), listed)
     report = judging.write_report(record, out)
     status = judging.exit_status(record)
     if status == INTERRUPTED:

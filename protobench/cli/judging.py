@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 from contextlib import ExitStack
+from datetime import datetime
 from pathlib import Path
 from typing import Any
 
@@ -16,10 +17,12 @@ from protobench.cli.progress import RunProgress
 from protobench.cli.summary import print_summary
 from protobench.contract import load_contract
 from protobench.evidence import ConformanceLog, build_report, junit_xml
-from protobench.judge import Failed, RunRecord
+from protobench.judge import KNOWN_DEVIATION, Failed, RunRecord
 from protobench.links import BadAddress, LinkError, NoVirtualTime
 from protobench.suite import run
 from protobench.suite.bench import NoModule
+from protobench.suite.deviations import Deviation, apply_deviations, load_deviations
+from protobench.suite.files import FileError
 from protobench.suite.options import RunOptions
 from protobench.suite.statement import StatementError, load_statement
 
@@ -64,6 +67,30 @@ def make_options(*, ics: Path | None, virtual: bool, **options: Any) -> RunOptio
     except StatementError as error:
         raise typer.BadParameter(str(error), param_hint="--ics") from None
     return RunOptions(statement=statement, virtual=virtual or None, **options)
+
+
+def read_deviations(path: Path | None) -> tuple[Deviation, ...] | None:
+    """The list of known deviations, None without one; a list that cannot be used ends the command."""
+    if path is None:
+        return None
+    try:
+        return load_deviations(path, load_contract(), [info.id for info in run.list_cases()])
+    except FileError as error:
+        raise refused("--deviations", error) from None
+
+
+def refused(option: str, error: FileError) -> typer.Exit:
+    """Say every problem of a file that cannot be used, a line each; what is returned ends the command."""
+    for problem in error.problems:
+        typer.echo(f"{option}: {problem}", err=True)
+    return typer.Exit(check.WRONG_USE)
+
+
+def beside(record: RunRecord, deviations: tuple[Deviation, ...] | None) -> RunRecord:
+    """The run beside the list of known deviations, as of today."""
+    if deviations is None:
+        return record
+    return apply_deviations(record, deviations, datetime.now().astimezone().date())
 
 
 def judge(options: RunOptions, stack: ExitStack, console: Console) -> RunRecord:
@@ -147,9 +174,9 @@ def exit_status(record: RunRecord) -> int:
     """0 to 4 or 130, as ``protobench check --help`` says."""
     if record.stopped == run.INTERRUPTED:
         return check.INTERRUPTED
-    if record.count("fail"):
+    if record.count("fail") or any(entry.stale for entry in record.deviations or ()):
         return check.FAILED
-    judged = record.count("pass") + record.count("inconc")
+    judged = record.count("pass") + record.count("inconc") + record.count(KNOWN_DEVIATION)
     if record.count("error") or record.stopped or not judged:
         return check.BENCH_FAILED
     return check.INCONCLUSIVE if record.count("inconc") else check.PASSED

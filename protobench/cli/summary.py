@@ -9,9 +9,9 @@ from rich.table import Table
 from rich.text import Text
 
 from protobench.contract import Contract
-from protobench.judge import CaseRecord, RunRecord
+from protobench.judge import KNOWN_DEVIATION, CaseRecord, DeviationRecord, RunRecord
 
-WORDS = ("pass", "fail", "inconc", "error", "not_applicable")
+WORDS = ("pass", "fail", "inconc", "error", "not_applicable", KNOWN_DEVIATION)
 SHOWN = ("fail", "error", "inconc")
 
 
@@ -21,6 +21,8 @@ def print_summary(console: Console, record: RunRecord, contract: Contract) -> No
         for case in record.cases:
             if case.verdict == word:
                 _print_case(console, case, contract)
+    for entry in record.deviations or ():
+        _print_deviation(console, entry)
     console.print(_table(record, contract))
     described = record.iut
     console.print(
@@ -51,14 +53,23 @@ def _print_case(console: Console, case: CaseRecord, contract: Contract) -> None:
     console.print()
 
 
+def _print_deviation(console: Console, entry: DeviationRecord) -> None:
+    """One entry of the list: what came of it, and who answers for it."""
+    title = f"{'WRONG IN THE LIST' if entry.stale else entry.state.replace('_', ' ').upper()} {entry.case}"
+    console.print(Text(title, style="bold"), Text(f"- {entry.message}"), soft_wrap=True)
+    console.print(Text(f"  listed by {entry.owner} until {entry.expires}: {entry.reason}"), soft_wrap=True)
+    console.print()
+
+
 def _table(record: RunRecord, contract: Contract) -> Table:
     table = Table(box=None, pad_edge=False)
     table.add_column("area")
-    for word in WORDS:
+    words = WORDS if record.deviations is not None else WORDS[:-1]
+    for word in words:
         table.add_column(word.replace("_", " "), justify="right")
     counts = Counter((case.id.partition(".")[0], case.verdict) for case in record.cases)
     for area in contract.areas:
-        row = [counts[area.code, word] for word in WORDS]
+        row = [counts[area.code, word] for word in words]
         if any(row):
             table.add_row(f"{area.code} {area.title}", *(str(count) if count else "." for count in row))
     return table

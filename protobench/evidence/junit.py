@@ -1,7 +1,8 @@
 """The run as JUnit XML, in the shape that pytest writes; there is no standard behind the name.
 
-``inconc`` and what does not apply are ``skipped`` with a type that says which, since the format has no word for either;
-``error`` is the bench's own.
+``inconc``, what does not apply, and known deviations are ``skipped`` with a type that says which, since the format has
+no word for them; ``error`` is the bench's own. An entry of the list of known deviations that the run has shown wrong
+is a failed test case of class ``deviations``.
 """
 
 from __future__ import annotations
@@ -9,18 +10,25 @@ from __future__ import annotations
 import re
 import xml.etree.ElementTree as ET
 
-from protobench.judge import CaseRecord, RunRecord
+from protobench.judge import CaseRecord, DeviationRecord, RunRecord
 
-_ELEMENTS = {"fail": "failure", "error": "error", "inconc": "skipped", "not_applicable": "skipped"}
+_ELEMENTS = {
+    "fail": "failure",
+    "error": "error",
+    "inconc": "skipped",
+    "not_applicable": "skipped",
+    "known_deviation": "skipped",
+}
 _NOT_XML = re.compile("[^\\t\\n\\x20-\\ud7ff\\ue000-\\ufffd\\U00010000-\\U0010ffff]")
 
 
 def junit_xml(record: RunRecord) -> bytes:
     """The document, UTF-8 with a declaration."""
-    skipped = record.count("inconc") + record.count("not_applicable")
+    skipped = sum(record.count(word) for word, element in _ELEMENTS.items() if element == "skipped")
+    stale = [entry for entry in record.deviations or () if entry.stale]
     counts = {
-        "tests": str(len(record.cases)),
-        "failures": str(record.count("fail")),
+        "tests": str(len(record.cases) + len(stale)),
+        "failures": str(record.count("fail") + len(stale)),
         "errors": str(record.count("error")),
         "skipped": str(skipped),
         "time": f"{sum(case.duration_s for case in record.cases):.3f}",
@@ -35,6 +43,8 @@ def junit_xml(record: RunRecord) -> bytes:
         ET.SubElement(properties, "property", {"name": name, "value": _clean(str(value))})
     for case in record.cases:
         _add_case(suite, case)
+    for entry in stale:
+        _add_stale(suite, entry)
     ET.indent(root)
     document: bytes = ET.tostring(root, encoding="utf-8", xml_declaration=True)
     return document
@@ -54,6 +64,14 @@ def _add_case(suite: ET.Element, case: CaseRecord) -> None:
     if tag is not None:
         outcome = ET.SubElement(element, tag, {"type": case.verdict, "message": _clean(case.reason)})
         outcome.text = _clean("\n".join(text for text in (case.detail, case.replay) if text))
+
+
+def _add_stale(suite: ET.Element, entry: DeviationRecord) -> None:
+    element = ET.SubElement(
+        suite, "testcase", {"classname": "deviations", "name": entry.case, "time": "0.000"}
+    )
+    outcome = ET.SubElement(element, "failure", {"type": entry.state, "message": _clean(entry.message)})
+    outcome.text = _clean(f"listed by {entry.owner} until {entry.expires}: {entry.reason}")
 
 
 def _clean(text: str) -> str:

@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+from dataclasses import asdict
 from typing import Any
 
 from protobench.contract import Contract
-from protobench.judge import NOT_APPLICABLE, CaseRecord, RunRecord, Verdict
+from protobench.judge import KNOWN_DEVIATION, NOT_APPLICABLE, CaseRecord, RunRecord, Verdict
 
 SUMMARY = ("pass", "fail", "inconc", "error", NOT_APPLICABLE)
 
@@ -13,17 +14,21 @@ SUMMARY = ("pass", "fail", "inconc", "error", NOT_APPLICABLE)
 def build_report(record: RunRecord, contract: Contract) -> dict[str, Any]:
     """The report: contract, seed, iut, environment, summary, cases, clauses; ``stopped`` too when a run was broken off.
 
-    A clause's verdict is the worst of the applicable cases that cover it, ``none`` when no case judged it.
+    A clause's verdict is the worst of the applicable cases that cover it, ``none`` when no case judged it. A known
+    deviation is a fail to its clauses. Beside a list of them there is ``deviations``, with what came of each entry.
     """
+    summary = SUMMARY if record.deviations is None else (*SUMMARY, KNOWN_DEVIATION)
     report: dict[str, Any] = {
         "contract": record.contract,
         "seed": record.seed,
         "iut": record.iut,
         "environment": record.environment,
-        "summary": {word: record.count(word) for word in SUMMARY},
+        "summary": {word: record.count(word) for word in summary},
         "cases": [_case(case) for case in record.cases],
         "clauses": _clauses(record, contract),
     }
+    if record.deviations is not None:
+        report["deviations"] = [asdict(entry) for entry in record.deviations]
     return report if record.stopped is None else {**report, "stopped": record.stopped}
 
 
@@ -38,6 +43,8 @@ def _case(case: CaseRecord) -> dict[str, Any]:
         "reason": case.reason,
         "duration_s": case.duration_s,
     }
+    if case.broken:
+        entry["broken"] = list(case.broken)
     if case.replay:
         entry |= {"detail": case.detail.splitlines(), "replay": case.replay}
     return entry
@@ -51,7 +58,7 @@ def _clauses(record: RunRecord, contract: Contract) -> list[dict[str, Any]]:
     entries = []
     for clause in contract.clauses:
         cases = covering.get(clause.id, [])
-        judged = [Verdict[case.verdict.upper()] for case in cases if case.verdict != NOT_APPLICABLE]
+        judged = [_worth(case.verdict) for case in cases if case.verdict != NOT_APPLICABLE]
         worst = max(judged, default=Verdict.NONE)
         entries.append(
             {
@@ -62,3 +69,7 @@ def _clauses(record: RunRecord, contract: Contract) -> list[dict[str, Any]]:
             }
         )
     return entries
+
+
+def _worth(verdict: str) -> Verdict:
+    return Verdict.FAIL if verdict == KNOWN_DEVIATION else Verdict[verdict.upper()]

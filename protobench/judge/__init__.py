@@ -1,7 +1,8 @@
 """Verdicts and what a run leaves behind."""
 
-from protobench.judge.record import CaseRecord, RunRecord
+from protobench.judge.record import CaseRecord, DeviationRecord, Exchange, RunRecord
 from protobench.judge.verdict import (
+    KNOWN_DEVIATION,
     NOT_APPLICABLE,
     CaseVerdict,
     Failed,
@@ -11,9 +12,12 @@ from protobench.judge.verdict import (
 )
 
 __all__ = [
+    "KNOWN_DEVIATION",
     "NOT_APPLICABLE",
     "CaseRecord",
     "CaseVerdict",
+    "DeviationRecord",
+    "Exchange",
     "Failed",
     "Inconclusive",
     "NotApplicable",

@@ -21,6 +21,7 @@ class Verdict(enum.IntEnum):
 
 
 NOT_APPLICABLE = "not_applicable"
+KNOWN_DEVIATION = "known_deviation"  # a fail that a list of known deviations expects
 
 
 class CaseVerdict(Exception):  # noqa: N818 - it carries a verdict, not always an error

@@ -6,7 +6,7 @@ import contextlib
 import platform
 import shlex
 import time
-from typing import Any
+from typing import Any, NamedTuple
 
 from protobench import __version__
 from protobench.contract import Contract, load_contract, parse_condition
@@ -28,6 +28,14 @@ from protobench.wire import Codec, load_codec
 
 DETAIL_LINES = 120
 HALT_SETTLE_NS = 100_000_000
+
+
+class Finding(NamedTuple):
+    """What speaks against a pass; ``clause`` is empty where the reason names none."""
+
+    verdict: Verdict
+    reason: str
+    clause: str = ""
 
 
 class NeedsAttendance(Exception):  # noqa: N818 - says what is missing
@@ -133,7 +141,8 @@ class Session:
     def judge(self, info: CaseInfo) -> CaseRecord:
         """Run one case with preamble and postamble and say how it went. Never raises what a module can cause."""
         begin = time.monotonic()
-        verdict, reason, detail = self._verdict(info)
+        found: list[Finding] = []
+        verdict, reason, detail = self._verdict(info, found)
         return CaseRecord(
             id=info.id,
             level=info.level,
@@ -145,13 +154,14 @@ class Session:
             duration_s=round(time.monotonic() - begin, 6),
             detail=detail,
             replay="" if verdict in ("pass", NOT_APPLICABLE) else self._replay(info),
+            broken=tuple(finding.clause for finding in found if finding.verdict is Verdict.FAIL),
         )
 
-    def _verdict(self, info: CaseInfo) -> tuple[str, str, str]:
+    def _verdict(self, info: CaseInfo, found: list[Finding]) -> tuple[str, str, str]:
+        """The case's verdict, reason and detail; ``found`` takes every finding."""
         missing = parse_condition(info.needs).why_not(self.bench.facts.items) if info.needs else None
         if missing:
             return NOT_APPLICABLE, missing, ""
-        found: list[tuple[Verdict, str]] = []
         try:
             self._attempt(lambda: self.bench.begin(info.id), found)
             if not found:
@@ -159,7 +169,7 @@ class Session:
             shown = len(self.bench.port.transcript) if found else None
             self._attempt(self.bench.end, found, "postamble: ")
             found += [
-                (Verdict.FAIL, f"{violation.clause}: {violation.reason}")
+                Finding(Verdict.FAIL, f"{violation.clause}: {violation.reason}", violation.clause)
                 for violation in self.bench.port.watch.violations
             ]
         except NotApplicable as why:
@@ -167,27 +177,26 @@ class Session:
             if not found:
                 return NOT_APPLICABLE, str(why), ""
         except LinkError as error:
-            found.append((Verdict.FAIL, f"LOD-02: the link to the module ended: {error}"))
+            found.append(Finding(Verdict.FAIL, f"LOD-02: the link to the module ended: {error}", "LOD-02"))
             detail = self._detail()
             self._reopen()
-            return Verdict.FAIL.word, found[0][1], detail
+            return Verdict.FAIL.word, found[0].reason, detail
         if not found:
             return Verdict.PASS.word, "", ""
-        worst = max(verdict for verdict, _ in found)
-        reasons = [reason for verdict, reason in found if verdict is worst]
+        worst = max(finding.verdict for finding in found)
+        reasons = [finding.reason for finding in found if finding.verdict is worst]
         return worst.word, reasons[0], self._detail(reasons[1:], shown)
 
-    def _attempt(self, step: Any, found: list[tuple[Verdict, str]], prefix: str = "") -> None:
+    def _attempt(self, step: Any, found: list[Finding], prefix: str = "") -> None:
         try:
             step()
         except CaseVerdict as verdict:
-            found.append((verdict.verdict, prefix + str(verdict)))
-            if verdict.detail:
-                found[-1] = (verdict.verdict, f"{prefix}{verdict}\n{verdict.detail}")
+            reason = f"{prefix}{verdict}\n{verdict.detail}" if verdict.detail else f"{prefix}{verdict}"
+            found.append(Finding(verdict.verdict, reason, verdict.clause or ""))
         except (LinkError, NotApplicable):
             raise
         except Exception as error:  # noqa: BLE001 - a defect of the bench or of a case is a verdict of its own
-            found.append((Verdict.ERROR, f"{prefix}{type(error).__name__}: {error}"))
+            found.append(Finding(Verdict.ERROR, f"{prefix}{type(error).__name__}: {error}"))
 
     def _detail(self, more: list[str] | None = None, shown: int | None = None) -> str:
         """The exchange up to the failure; what the postamble did after it is in the conformance log."""

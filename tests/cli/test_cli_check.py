@@ -150,6 +150,83 @@ def test_nothing_judged_is_no_pass() -> None:
     assert "1 not applicable" in done.stdout.decode()
 
 
+def test_known_deviations_are_reported_and_excused_until_they_expire(tmp_path: Path) -> None:
+    known = tmp_path / "known.toml"
+    text = (
+        '[[deviation]]\ncase = "HLT.not-included"\nclause = "ADR-01"\nreason = "Invented."\n'
+        'owner = "drives team"\nexpires = 9999-12-31\n'
+    )
+    known.write_text(text)
+    link = lockstep("halts-for-others")
+    arguments = ("check", "--link", link, "--only", "HLT.not-included or VER", "--deviations", str(known))
+    done = run(*arguments, "--out", str(tmp_path / "out"))
+    words_out = done.stdout.decode()
+    assert done.returncode == 0, words_out + done.stderr.decode()
+    assert "4 pass, 1 known deviation" in words_out
+    assert "KNOWN HLT.not-included - ADR-01: a halt for another address must not be answered" in words_out
+    assert "listed by drives team until 9999-12-31: Invented." in words_out
+    report = json.loads((tmp_path / "out" / "report.json").read_text())
+    assert report["summary"] == dict.fromkeys(SUMMARY_KEYS, 0) | {"pass": 4, "known_deviation": 1}
+    (entry,) = report["deviations"]
+    assert (entry["case"], entry["state"], entry["owner"]) == ("HLT.not-included", "known", "drives team")
+    (judged,) = [case for case in report["cases"] if case["verdict"] == "known_deviation"]
+    assert judged["broken"] == ["ADR-01"]
+    assert judged["replay"]
+    (clause,) = [clause for clause in report["clauses"] if clause["id"] == "ADR-01"]
+    assert clause["verdict"] == "fail"
+    suite = ET.parse(tmp_path / "out" / "junit.xml").getroot().find("testsuite")
+    assert suite is not None
+    assert [suite.attrib[name] for name in ("tests", "failures", "skipped")] == ["5", "0", "1"]
+    assert [skipped.attrib["type"] for skipped in suite.iter("skipped")] == ["known_deviation"]
+
+    known.write_text(text.replace("9999-12-31", "2026-01-01"))
+    done = run(*arguments)
+    assert done.returncode == 1
+    assert "expired on 2026-01-01; the case still fails" in done.stdout.decode()
+    known.write_text(text.replace("ADR-01", "ADR-02"))
+    done = run(*arguments)
+    assert done.returncode == 1
+    assert "the case fails by ADR-01, the list says ADR-02" in done.stdout.decode()
+
+
+@pytest.mark.parametrize(
+    ("case", "only", "status", "message"),
+    [
+        ("HLT.not-included", "HLT.not-included", 1, "the case passes; take the entry out of the list"),
+        ("MOT.no-queue", "MOT.no-queue or VER", 1, "the case is not applicable (only without queue)"),
+        ("MOT.no-queue", "VER", 0, "the case was not judged in this run"),
+    ],
+)
+def test_a_list_that_the_run_shows_wrong_fails_it(
+    tmp_path: Path, case: str, only: str, status: int, message: str
+) -> None:
+    known = tmp_path / "known.toml"
+    known.write_text(
+        f'[[deviation]]\ncase = "{case}"\nreason = "Invented."\nowner = "nobody"\nexpires = 9999-12-31\n'
+    )
+    done = invoke("check", "--only", only, "--deviations", str(known), "--out", str(tmp_path))
+    assert done.exit_code == status
+    assert message in words(done.stdout)
+    suite = ET.parse(tmp_path / "junit.xml").getroot().find("testsuite")
+    assert suite is not None
+    failed = [case.attrib["name"] for case in suite.iter("testcase") if case.find("failure") is not None]
+    assert failed == ([case] if status else [])
+    assert suite.attrib["failures"] == str(len(failed))
+
+
+def test_a_list_that_cannot_be_used_ends_check_before_it_begins(tmp_path: Path) -> None:
+    known = tmp_path / "known.toml"
+    known.write_text(
+        '[[deviation]]\ncase = "HLT.to-grup"\nreason = "x"\nowner = "y"\nexpires = 9999-12-31\n' * 2
+    )
+    done = invoke("check", "--deviations", str(known), "--out", str(tmp_path / "out"))
+    assert done.exit_code == 2
+    assert done.stdout == ""
+    assert "deviation[0].case: 'HLT.to-grup' is no case; did you mean 'HLT.to-group'?" in done.stderr
+    assert "deviation[1].case: 'HLT.to-grup' is listed already" in done.stderr
+    assert not (tmp_path / "out").exists()
+
+
 def test_a_statement_is_held_against_the_module(tmp_path: Path) -> None:
     described = json.loads(run("check", "--json", "--only", "VER").stdout)["iut"]
     contract = load_contract()
