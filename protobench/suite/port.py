@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
+from collections import deque
 from collections.abc import Callable
 from dataclasses import dataclass
-from typing import Any, Protocol
+from itertools import islice
+from typing import Any, NamedTuple, Protocol
 
-from protobench.judge import Failed
+from protobench.judge import Exchange, Failed
 from protobench.links import Chunk, Framing, ImpairedLink, Link
-from protobench.suite.language import Language
+from protobench.suite.language import Language, Reading
 from protobench.suite.watch import Watch
 from protobench.wire import Dropped, Frame
 
@@ -33,6 +35,19 @@ class NoLog:
 
     def note(self, time_ns: int, text: str) -> None:
         pass
+
+
+class Event(NamedTuple):
+    """What passed, kept raw: words are made only where somebody reads them. ``time_ns`` is the link's clock."""
+
+    time_ns: int
+    direction: str
+    data: bytes
+    meaning: Reading | str
+
+    @property
+    def words(self) -> str:
+        return self.meaning if isinstance(self.meaning, str) else self.meaning.words
 
 
 @dataclass(slots=True)
@@ -68,14 +83,20 @@ class Received:
 
 
 class Port:
-    """Frames over one link. ``inbox`` holds what no expectation has taken yet, in order of arrival."""
+    """Frames over one link.
+
+    ``inbox`` holds what no expectation has taken yet, in order of arrival; ``events`` the last of what passed in the
+    case, of ``events_seen`` in all.
+    """
 
     def __init__(self, link: Link, language: Language, log: Log | None = None) -> None:
         self.link = link
         self.language = language
         self.log = log or NoLog()
+        self._logs = log is not None
         self.inbox: list[Received] = []
-        self.transcript: list[str] = []
+        self.events: deque[Event] = deque(maxlen=EVENTS_MAX)
+        self.events_seen = 0
         self.watch = Watch(language.contract)
         self._decoder = language.stream_decoder()
         self._last_sent_ns: int | None = None
@@ -106,8 +127,9 @@ class Port:
         return self.link.framing is not Framing.DATAGRAM
 
     def begin_case(self) -> None:
-        """Forget what earlier cases left: transcript, inbox, measured lateness."""
-        self.transcript.clear()
+        """Forget what earlier cases left: events, inbox, measured lateness."""
+        self.events.clear()
+        self.events_seen = 0
         self.inbox.clear()
         self.watch.begin_case()
         self._lateness_ns = 0
@@ -123,8 +145,9 @@ class Port:
         else:
             time_ns = self._send_units(*frames)
         for frame in frames:
-            self.watch.sent(frame, self.language.read(frame), time_ns)
-            self._note("->", time_ns, frame)
+            reading = self.language.read(frame)
+            self.watch.sent(frame, reading, time_ns)
+            self._record("->", time_ns, frame, reading)
         return time_ns
 
     def send_raw(self, data: bytes, *, lead: bool = True) -> int:
@@ -136,7 +159,7 @@ class Port:
         else:
             unit = data
         time_ns = self._send_units(unit)
-        self._note_raw("->", time_ns, data)
+        self._record("->", time_ns, data, "raw bytes")
         for frame in self.language.split(data):
             self.watch.sent(frame, self.language.read(frame), time_ns)
         return time_ns
@@ -220,35 +243,38 @@ class Port:
         if isinstance(frame, Dropped):
             self._dropped(frame, time_ns)
             return
-        self._note("<-", time_ns, unit)
         reading = self.language.read(unit)
+        self._record("<-", time_ns, unit, reading)
         self.watch.received(unit, reading, time_ns)
         if reading.fields is not None:
             self.inbox.append(Received(time_ns, unit, frame, reading.kind, reading.fields))
 
     def _dropped(self, dropped: Dropped, time_ns: int) -> None:
-        self._note_raw("<-", time_ns, dropped.data, f"{dropped.reason}: {dropped.detail}")
+        self._record("<-", time_ns, dropped.data, f"{dropped.reason}: {dropped.detail}")
         self.watch.noise(dropped)
 
     # ------------------------------------------------------------ record
 
-    def _note(self, direction: str, time_ns: int, frame: bytes) -> None:
-        self._record(direction, time_ns, frame, self.language.read(frame).words)
+    def _record(self, direction: str, time_ns: int, data: bytes, meaning: Reading | str) -> None:
+        kept = data if direction == "->" else data[:KEPT_BYTES_MAX]
+        event = Event(time_ns, direction, kept, meaning)
+        self.events.append(event)
+        self.events_seen += 1
+        if self._logs:
+            self.log.frame(time_ns, direction, data, event.words)
 
-    def _note_raw(self, direction: str, time_ns: int, data: bytes, meaning: str = "raw bytes") -> None:
-        self._record(direction, time_ns, data, meaning)
+    def exchange(self, until: int | None = None, last: int | None = None) -> list[Exchange]:
+        """What passed in this case: up to its event number ``until``, at most the ``last`` ones before that."""
+        end = self.events_seen if until is None else until
+        gone = self.events_seen - len(self.events)
+        begin = max(gone, 0 if last is None else end - last)
+        return [
+            Exchange(event.time_ns - self._begin_ns, event.direction, event.data, event.words)
+            for event in islice(self.events, begin - gone, max(end - gone, 0))
+        ]
 
-    def _record(self, direction: str, time_ns: int, data: bytes, meaning: str) -> None:
-        at_ms = (time_ns - self._begin_ns) / 1e6
-        if len(self.transcript) < TRANSCRIPT_LINES:
-            self.transcript.append(f"{at_ms:12.3f} ms {direction} {meaning}\n{'':19}{_hex(data)}")
-        self.log.frame(time_ns, direction, data, meaning)
 
-
-TRANSCRIPT_LINES = 2000
+EVENTS_MAX = 6000  # of one case; a module that floods the link must not fill the memory
+KEPT_BYTES_MAX = 512  # of what is received; a frame is shorter
 FLOOD_GRACE_NS = 2_000_000_000
 INBOX_FRAMES_MAX = 20_000
-
-
-def _hex(data: bytes) -> str:
-    return data.hex(" ") if len(data) <= 320 else f"{data[:320].hex(' ')} ... {len(data)} bytes"

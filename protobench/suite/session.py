@@ -6,6 +6,7 @@ import contextlib
 import platform
 import shlex
 import time
+from collections.abc import Sequence
 from typing import Any, NamedTuple
 
 from protobench import __version__
@@ -14,6 +15,7 @@ from protobench.judge import (
     NOT_APPLICABLE,
     CaseRecord,
     CaseVerdict,
+    Exchange,
     NotApplicable,
     RunRecord,
     Verdict,
@@ -26,7 +28,9 @@ from protobench.suite.port import Log
 from protobench.suite.targets import embedded_link
 from protobench.wire import Codec, load_codec
 
-DETAIL_LINES = 120
+DETAIL_FRAMES = 120
+EXCHANGE_RUN_MAX = 50_000  # frames kept of all cases of a run together
+EXCHANGE_LEAST = 200  # of each case after that
 HALT_SETTLE_NS = 100_000_000
 
 
@@ -36,6 +40,15 @@ class Finding(NamedTuple):
     verdict: Verdict
     reason: str
     clause: str = ""
+
+
+class Judged(NamedTuple):
+    """How a case went; ``detail`` and ``exchange`` are empty where there is nothing to look at."""
+
+    verdict: str
+    reason: str = ""
+    detail: str = ""
+    exchange: Sequence[Exchange] = ()
 
 
 class NeedsAttendance(Exception):  # noqa: N818 - says what is missing
@@ -54,6 +67,7 @@ class Session:
         self.contract: Contract = load_contract()
         self.codec: Codec = load_codec(self.contract)
         self._log = log
+        self._kept = 0
         self.bench = self._open()
 
     def __enter__(self) -> Session:
@@ -142,31 +156,32 @@ class Session:
         """Run one case with preamble and postamble and say how it went. Never raises what a module can cause."""
         begin = time.monotonic()
         found: list[Finding] = []
-        verdict, reason, detail = self._verdict(info, found)
+        judged = self._verdict(info, found)
         return CaseRecord(
             id=info.id,
             level=info.level,
             case_class=info.case_class,
             purpose=info.purpose,
             clauses=info.clauses,
-            verdict=verdict,
-            reason=reason,
+            verdict=judged.verdict,
+            reason=judged.reason,
             duration_s=round(time.monotonic() - begin, 6),
-            detail=detail,
-            replay="" if verdict in ("pass", NOT_APPLICABLE) else self._replay(info),
+            detail=judged.detail,
+            replay="" if judged.verdict in ("pass", NOT_APPLICABLE) else self._replay(info),
             broken=tuple(finding.clause for finding in found if finding.verdict is Verdict.FAIL),
+            exchange=judged.exchange,
         )
 
-    def _verdict(self, info: CaseInfo, found: list[Finding]) -> tuple[str, str, str]:
-        """The case's verdict, reason and detail; ``found`` takes every finding."""
+    def _verdict(self, info: CaseInfo, found: list[Finding]) -> Judged:
+        """How the case went; ``found`` takes every finding."""
         missing = parse_condition(info.needs).why_not(self.bench.facts.items) if info.needs else None
         if missing:
-            return NOT_APPLICABLE, missing, ""
+            return Judged(NOT_APPLICABLE, missing)
         try:
             self._attempt(lambda: self.bench.begin(info.id), found)
             if not found:
                 self._attempt(lambda: info.function(self.bench), found)
-            shown = len(self.bench.port.transcript) if found else None
+            shown = self.bench.port.events_seen if found else None
             self._attempt(self.bench.end, found, "postamble: ")
             found += [
                 Finding(Verdict.FAIL, f"{violation.clause}: {violation.reason}", violation.clause)
@@ -175,17 +190,17 @@ class Session:
         except NotApplicable as why:
             self._attempt(self.bench.end, found, "postamble: ")
             if not found:
-                return NOT_APPLICABLE, str(why), ""
+                return Judged(NOT_APPLICABLE, str(why))
         except LinkError as error:
             found.append(Finding(Verdict.FAIL, f"LOD-02: the link to the module ended: {error}", "LOD-02"))
-            detail = self._detail()
+            judged = Judged(Verdict.FAIL.word, found[0].reason, self._detail(), self._keep_exchange(None))
             self._reopen()
-            return Verdict.FAIL.word, found[0].reason, detail
+            return judged
         if not found:
-            return Verdict.PASS.word, "", ""
+            return Judged(Verdict.PASS.word)
         worst = max(finding.verdict for finding in found)
         reasons = [finding.reason for finding in found if finding.verdict is worst]
-        return worst.word, reasons[0], self._detail(reasons[1:], shown)
+        return Judged(worst.word, reasons[0], self._detail(reasons[1:], shown), self._keep_exchange(shown))
 
     def _attempt(self, step: Any, found: list[Finding], prefix: str = "") -> None:
         try:
@@ -200,11 +215,19 @@ class Session:
 
     def _detail(self, more: list[str] | None = None, shown: int | None = None) -> str:
         """The exchange up to the failure; what the postamble did after it is in the conformance log."""
+        port = self.bench.port
         lines = [f"also: {reason}" for reason in more or []]
-        transcript = self.bench.port.transcript[:shown]
-        if len(transcript) > DETAIL_LINES:
-            lines.append(f"... {len(transcript) - DETAIL_LINES} earlier frames are in the conformance log")
-        return "\n".join(lines + transcript[-DETAIL_LINES:])
+        total = port.events_seen if shown is None else shown
+        if total > DETAIL_FRAMES:
+            lines.append(f"... {total - DETAIL_FRAMES} earlier frames are in the conformance log")
+        return "\n".join(lines + [_line(exchange) for exchange in port.exchange(shown, DETAIL_FRAMES)])
+
+    def _keep_exchange(self, shown: int | None) -> list[Exchange]:
+        """The exchange for charts and replays: whole, until so many of the run's are kept that only ends are."""
+        port = self.bench.port
+        kept = port.exchange(shown, None if self._kept < EXCHANGE_RUN_MAX else EXCHANGE_LEAST)
+        self._kept += len(kept)
+        return kept
 
     def _reopen(self) -> None:
         """The far end went away: the next case gets a new link. What cannot be opened again ends the run."""
@@ -219,3 +242,9 @@ class Session:
         if self.options.attended:
             command.append("--attended")
         return shlex.join(command)
+
+
+def _line(exchange: Exchange) -> str:
+    data = exchange.data
+    shown = data.hex(" ") if len(data) <= 320 else f"{data[:320].hex(' ')} ... {len(data)} bytes"
+    return f"{exchange.time_ns / 1e6:12.3f} ms {exchange.direction} {exchange.words}\n{'':19}{shown}"
