@@ -204,6 +204,7 @@ def test_past_return(bench: Bench) -> None:
     a.hold("committed")
     move = a.move(facts.name)
     queued = a.move() if bench.facts.has("queue") else None
+    a.wait_begun()
     bench.port.wait_ms(facts.no_return_ms + 20)
     if _halt(bench.b)["disposition"] != "past-no-return":
         raise Failed("a halt past the point of no return must say so", clause="HLT-05")

@@ -197,6 +197,7 @@ def test_table_moving(bench: Bench) -> None:
             tester.make_ready(20_000)
             tester.hold("running")
             tester.move(bench.facts.stoppable().name)
+            tester.wait_begun()
             if name in ("cancel", "release-lease"):
                 _check_stopping_input(bench, tester, name)
             else:

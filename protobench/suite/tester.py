@@ -269,6 +269,10 @@ class Tester:
         """An accepted move; without a name the quickest motion, with half its greatest magnitude unless given."""
         return self.accepted("move", clause="MOT-01", **self.move_fields(motion, **options))
 
+    def wait_begun(self) -> None:
+        """Let the time pass within which an accepted motion that need not wait has to begin."""
+        self.port.wait_ms(self.bench.facts.receipt_ms + self.port.u_ms)
+
     def move_fields(self, motion: str | None = None, **options: Any) -> dict[str, Any]:
         """Fields of a sound move request."""
         name = motion or self.bench.facts.travel().name

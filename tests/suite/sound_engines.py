@@ -118,9 +118,20 @@ class UnsteadyModule(ModuleEngine):
                 motion.next_us = self.outbox.last_us
 
 
+class PollingModule(ModuleEngine):
+    """Looks at its timers only every 9 ms, as a main loop does; what arrives is taken at once."""
+
+    TICK_US = 9000
+
+    def next_deadline_us(self) -> int | None:
+        due_us = super().next_deadline_us()
+        return None if due_us is None else -(-due_us // self.TICK_US) * self.TICK_US
+
+
 ENGINES: dict[str, type[ModuleEngine]] = {
     "private-ranges": PrivateModule,
     "defaults-spelled-out": SpelledOutModule,
     "fill-between-frames": FillModule,
     "unsteady": UnsteadyModule,
+    "polling": PollingModule,
 }

@@ -237,6 +237,8 @@ static struct pb_slot *ready_to_begin(struct pb_module *module)
         return NULL;
     if (!pb_answers_have_left(module, head->receipt) && !PB_VARIANT(motion_before_receipt))
         return NULL;
+    if (PB_VARIANT(begins_late) && module->now_us % 200000u != 0)
+        return NULL;
     return head;
 }
 
@@ -263,6 +265,8 @@ uint64_t pb_motion_next_due(struct pb_module *module)
         due_us = pb_earlier(due_us, scheduled->start_us);
     if (ready_to_begin(module) != NULL)
         due_us = pb_earlier(due_us, module->now_us);
+    if (PB_VARIANT(begins_late))
+        due_us = pb_earlier(due_us, (module->now_us / 200000u + 1u) * 200000u);
     return due_us;
 }
 

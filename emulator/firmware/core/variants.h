@@ -173,6 +173,7 @@
     X(bond_with_nothing_done) \
     X(unbond_not_recorded) \
     X(copied_move_made_again) \
+    X(begins_late) \
     X(halt_to_group_ignored) \
     X(halt_counted_once) \
     X(halt_flags_checked) \
