@@ -7,9 +7,9 @@ is a failed test case of class ``deviations``.
 
 from __future__ import annotations
 
-import re
 import xml.etree.ElementTree as ET
 
+from protobench.evidence.text import clean
 from protobench.judge import CaseRecord, DeviationRecord, RunRecord
 
 _ELEMENTS = {
@@ -19,7 +19,6 @@ _ELEMENTS = {
     "not_applicable": "skipped",
     "known_deviation": "skipped",
 }
-_NOT_XML = re.compile("[^\\t\\n\\x20-\\ud7ff\\ue000-\\ufffd\\U00010000-\\U0010ffff]")
 
 
 def junit_xml(record: RunRecord) -> bytes:
@@ -40,7 +39,7 @@ def junit_xml(record: RunRecord) -> bytes:
     if record.stopped is not None:
         facts["stopped"] = record.stopped
     for name, value in facts.items():
-        ET.SubElement(properties, "property", {"name": name, "value": _clean(str(value))})
+        ET.SubElement(properties, "property", {"name": name, "value": clean(str(value))})
     for case in record.cases:
         _add_case(suite, case)
     for entry in stale:
@@ -62,18 +61,13 @@ def _add_case(suite: ET.Element, case: CaseRecord) -> None:
         ET.SubElement(properties, "property", {"name": name, "value": value})
     tag = _ELEMENTS.get(case.verdict)
     if tag is not None:
-        outcome = ET.SubElement(element, tag, {"type": case.verdict, "message": _clean(case.reason)})
-        outcome.text = _clean("\n".join(text for text in (case.detail, case.replay) if text))
+        outcome = ET.SubElement(element, tag, {"type": case.verdict, "message": clean(case.reason)})
+        outcome.text = clean("\n".join(text for text in (case.detail, case.replay) if text))
 
 
 def _add_stale(suite: ET.Element, entry: DeviationRecord) -> None:
     element = ET.SubElement(
         suite, "testcase", {"classname": "deviations", "name": entry.case, "time": "0.000"}
     )
-    outcome = ET.SubElement(element, "failure", {"type": entry.state, "message": _clean(entry.message)})
-    outcome.text = _clean(f"listed by {entry.owner} until {entry.expires}: {entry.reason}")
-
-
-def _clean(text: str) -> str:
-    """With a question mark for each character that XML 1.0 cannot hold (its production 2)."""
-    return _NOT_XML.sub("?", text)
+    outcome = ET.SubElement(element, "failure", {"type": entry.state, "message": clean(entry.message)})
+    outcome.text = clean(f"listed by {entry.owner} until {entry.expires}: {entry.reason}")
