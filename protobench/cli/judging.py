@@ -24,7 +24,7 @@ from protobench.suite.bench import NoModule
 from protobench.suite.deviations import Deviation, apply_deviations, load_deviations
 from protobench.suite.files import FileError
 from protobench.suite.options import RunOptions
-from protobench.suite.statement import StatementError, load_statement
+from protobench.suite.statement import Statement, load_statement
 
 
 def check_expression(level: str, only: str | None) -> None:
@@ -61,12 +61,18 @@ def list_cases(level: str, only: str | None, *, as_json: bool) -> None:
 
 
 def make_options(*, ics: Path | None, virtual: bool, **options: Any) -> RunOptions:
-    """Options of the run; a statement that cannot be used ends the command."""
+    """Options of the run; a statement that cannot be read ends the command."""
+    return RunOptions(statement=read_statement(ics, "--ics"), virtual=virtual or None, **options)
+
+
+def read_statement(path: Path | None, option: str) -> Statement | None:
+    """The conformance statement, None without one; one that cannot be read ends the command."""
+    if path is None:
+        return None
     try:
-        statement = load_statement(ics, load_contract()) if ics is not None else None
-    except StatementError as error:
-        raise typer.BadParameter(str(error), param_hint="--ics") from None
-    return RunOptions(statement=statement, virtual=virtual or None, **options)
+        return load_statement(path, load_contract())
+    except FileError as error:
+        raise refused(option, error) from None
 
 
 def read_deviations(path: Path | None) -> tuple[Deviation, ...] | None:

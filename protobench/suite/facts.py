@@ -16,6 +16,7 @@ class MotionFacts:
     """One declared motion; times in ms, magnitudes in the motion's own unit."""
 
     name: str
+    actuator: int
     magnitude_min: int
     magnitude_max: int
     typical_ms: int

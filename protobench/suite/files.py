@@ -6,6 +6,7 @@ import difflib
 import tomllib
 import typing
 from collections.abc import Collection, Iterable, Mapping, Sequence
+from datetime import date
 from pathlib import Path
 from typing import Any, TypeVar
 
@@ -16,6 +17,16 @@ from protobench.contract.load import plain_rule, tuples
 from protobench.contract.problems import Problem
 
 FILE_SIZE_MAX = 1_000_000
+_WANTED = {
+    "tuple_type": "a list",
+    "model_type": "a table",
+    "dict_type": "a table",
+    "string_type": "text",
+    "string_too_short": "text, and not empty",
+    "int_type": "a whole number",
+    "bool_type": "true or false",
+    "date_type": "a date such as 2027-01-31",
+}
 AnyModel = TypeVar("AnyModel", bound=Model)
 
 
@@ -36,7 +47,8 @@ def read_toml(path: Path, model: type[AnyModel]) -> AnyModel:
         return model.model_validate(tuples(data))
     except pd.ValidationError as error:
         raise FileError(
-            Problem(str(path), entry["loc"], _rule(model, entry)) for entry in error.errors(include_url=False)
+            Problem(str(path), tuple(part for part in entry["loc"] if part != "[key]"), _rule(model, entry))
+            for entry in error.errors(include_url=False)
         ) from None
     except OSError as error:
         raise FileError([Problem(str(path), (), f"cannot be read: {error.strerror}")]) from None
@@ -61,6 +73,12 @@ def _rule(model: type[Model], entry: Any) -> str:
         return f"unknown key{near(str(entry['loc'][-1]), _fields_at(model, entry['loc'][:-1]))}"
     if entry["type"] == "missing":
         return "is missing"
+    if entry["type"] in _WANTED:
+        value = entry["input"]
+        found = f"; found {value!r}" if isinstance(value, str | int | float | date) else ""
+        return f"must be {_WANTED[entry['type']]}{found}"
+    if entry["type"] == "value_error":
+        return str(entry["msg"]).removeprefix("Value error, ")
     return plain_rule(entry)
 
 

@@ -21,9 +21,11 @@ class RunOptions:
     ``link``: link address as text, or None for the embedded emulated module in virtual time.
     ``address``: the module's unicast address, or None to find it by a probe.
     ``only``: a pytest ``-k``-like expression over case ids and areas, or None for all.
-    ``statement``: what the supplier says the module has; a module that describes itself otherwise is not judged.
+    ``statement``: what the supplier says the module has; a module that describes itself otherwise is not judged, and
+    one whose statement breaks the contract is sent nothing.
     ``level``: ``required`` or ``recommended`` (which includes the required ones).
     ``attended``: someone stands by, so what can move hardware may be sent.
+    ``reads_only``: the module is asked what it is and not judged, so a physical one needs nobody beside it.
     ``opener``: opens the link instead of ``link``; the text then only names it.
     """
 
@@ -36,6 +38,7 @@ class RunOptions:
     out: Path | None = None
     attended: bool = False
     virtual: bool | None = None
+    reads_only: bool = False
     opener: LinkOpener | None = None
 
 

@@ -10,7 +10,7 @@ from collections.abc import Sequence
 from typing import Any, NamedTuple
 
 from protobench import __version__
-from protobench.contract import Contract, load_contract, parse_condition
+from protobench.contract import Contract, load_contract
 from protobench.judge import (
     NOT_APPLICABLE,
     CaseRecord,
@@ -25,6 +25,8 @@ from protobench.suite.bench import Bench
 from protobench.suite.case import CaseInfo
 from protobench.suite.options import RunOptions
 from protobench.suite.port import Log
+from protobench.suite.statement_review import compare, review
+from protobench.suite.statement_select import why_not
 from protobench.suite.targets import embedded_link
 from protobench.wire import Codec, load_codec
 
@@ -56,7 +58,10 @@ class NeedsAttendance(Exception):  # noqa: N818 - says what is missing
 
 
 class StatementDiffers(Exception):  # noqa: N818 - says what differs
-    """The module describes itself otherwise than its conformance statement says; the message says where."""
+    """The conformance statement breaks the contract, or the module describes itself otherwise.
+
+    The message says where, a line each.
+    """
 
 
 class Session:
@@ -68,6 +73,7 @@ class Session:
         self.codec: Codec = load_codec(self.contract)
         self._log = log
         self._kept = 0
+        self._review_statement()
         self.bench = self._open()
 
     def __enter__(self) -> Session:
@@ -98,9 +104,11 @@ class Session:
             if not link.loopback:
                 self._need_attendance(link.name)
             bench = Bench(link, self.contract, self.codec, self.options.seed, self._log)
-            bench.discover(self.options.address)
+            statement = self.options.statement
+            address = self.options.address
+            bench.discover(statement.address if statement is not None and address is None else address)
             self._compare_statement(bench)
-            if not bench.facts.emulated and not self.options.attended:
+            if not (bench.facts.emulated or self.options.attended or self.options.reads_only):
                 raise NeedsAttendance(
                     f"module {bench.address} on {link.name} describes itself as physical. Nothing that can move it "
                     "was sent. Give --attended when someone stands by with an independent power cut."
@@ -117,14 +125,22 @@ class Session:
                 "Nothing was sent. Give --attended when someone stands by with an independent power cut."
             )
 
+    def _review_statement(self) -> None:
+        statement = self.options.statement
+        if statement is not None and not self.options.reads_only:
+            found = review(statement, self.contract)
+            if found:
+                raise StatementDiffers("\n".join(f"{statement.file}: {finding}" for finding in found))
+
     def _compare_statement(self, bench: Bench) -> None:
-        if self.options.statement is None:
-            return
-        differences = self.options.statement.differences(self.contract, bench.facts.description)
-        if differences:
-            raise StatementDiffers(
-                f"module {bench.address} contradicts its statement: {'; '.join(differences)}"
-            )
+        statement = self.options.statement
+        if statement is not None and not self.options.reads_only:
+            found = compare(statement, self.contract, bench.address, bench.facts)
+            if found:
+                lines = [f"  {statement.file}: {finding}" for finding in found]
+                raise StatementDiffers(
+                    "\n".join([f"module {bench.address} contradicts its statement:", *lines])
+                )
 
     def _open_link(self) -> Link:
         if self.options.opener is not None:
@@ -148,6 +164,9 @@ class Session:
             "python": platform.python_version(),
             "system": f"{platform.system()} {platform.machine()}",
         }
+        if self.options.statement is not None:
+            environment["statement"] = self.options.statement.file
+            environment["statement_sha256"] = self.options.statement.digest
         return RunRecord(f"{self.contract.name} {self.contract.version}", self.options.seed, iut, environment)
 
     # ------------------------------------------------------------ judging
@@ -174,7 +193,7 @@ class Session:
 
     def _verdict(self, info: CaseInfo, found: list[Finding]) -> Judged:
         """How the case went; ``found`` takes every finding."""
-        missing = parse_condition(info.needs).why_not(self.bench.facts.items) if info.needs else None
+        missing = why_not(info, self.bench.facts.items, self.options.statement, self.contract)
         if missing:
             return Judged(NOT_APPLICABLE, missing)
         try:
@@ -239,6 +258,8 @@ class Session:
         if self.options.link is not None:
             command += ["--link", self.options.link]
         command += ["--address", str(self.bench.address), "--seed", str(self.options.seed), "--only", info.id]
+        if self.options.statement is not None:
+            command += ["--ics", self.options.statement.file]
         if self.options.attended:
             command.append("--attended")
         return shlex.join(command)

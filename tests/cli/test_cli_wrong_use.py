@@ -59,9 +59,12 @@ def test_virtual_time_where_there_is_one() -> None:
 @pytest.mark.parametrize(
     ("text", "message"),
     [
-        ('capabilities = ["flight"]', "capabilities has 'flight'"),
-        ("speed = 3", "speed = 3"),
-        ("motions = 7", "motions = 7"),
+        (
+            'capabilities = ["flight"]',
+            "capabilities[0]: 'flight' is no capability of the contract; known: queue",
+        ),
+        ("speed = 3", "speed: unknown key; known: contract"),
+        ("motions = 7", "motions: must be a list; found 7"),
         ("= =", "line 1"),
         ("\udcff", "decode"),
     ],
