@@ -9,7 +9,7 @@ import structlog
 import typer
 
 from protobench import __version__
-from protobench.cli import check, contract, decode, emulate
+from protobench.cli import check, contract, decode, emulate, ics
 
 app = typer.Typer(
     name="protobench",
@@ -23,6 +23,7 @@ app.command("check")(check.check)
 app.command("emulate")(emulate.emulate)
 app.command("decode")(decode.decode)
 app.add_typer(contract.app, name="contract")
+app.add_typer(ics.app, name="ics")
 
 
 def _show_version(wanted: bool) -> None:

@@ -62,13 +62,12 @@ def list_cases(level: str, only: str | None, *, as_json: bool) -> None:
 
 def make_options(*, ics: Path | None, virtual: bool, **options: Any) -> RunOptions:
     """Options of the run; a statement that cannot be read ends the command."""
-    return RunOptions(statement=read_statement(ics, "--ics"), virtual=virtual or None, **options)
+    statement = read_statement(ics, "--ics") if ics is not None else None
+    return RunOptions(statement=statement, virtual=virtual or None, **options)
 
 
-def read_statement(path: Path | None, option: str) -> Statement | None:
-    """The conformance statement, None without one; one that cannot be read ends the command."""
-    if path is None:
-        return None
+def read_statement(path: Path, option: str) -> Statement:
+    """A conformance statement; one that cannot be read ends the command."""
     try:
         return load_statement(path, load_contract())
     except FileError as error:

@@ -43,7 +43,10 @@ class Identification(Model):
 class Clauses(Model):
     """Clauses that the build does not keep."""
 
-    not_kept: tuple[str, ...] | None = None
+    not_kept: tuple[str, ...] | None = pd.Field(
+        None,
+        description="Their ids. A recommended one takes its cases out of the run; a required one breaks the contract.",
+    )
 
 
 class Restart(Model):
@@ -57,7 +60,7 @@ class Restart(Model):
         None, description="A control line of the serial link that the bench pulses."
     )
     operator: Text | None = pd.Field(
-        None, description="What a person has to do. The bench cannot; for the reader."
+        None, description="What a person has to do; for the reader, the bench does not ask for it."
     )
     takes_ms: int | None = pd.Field(
         None,
