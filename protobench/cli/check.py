@@ -51,7 +51,9 @@ def check(
     seed: Annotated[int, typer.Option(help="Seed of everything random.")] = 1,
     out: Annotated[
         Path | None,
-        typer.Option(file_okay=False, help="Folder for report.json, junit.xml and conformance.log."),
+        typer.Option(
+            file_okay=False, help="Folder for report.html, report.json, junit.xml and conformance.log."
+        ),
     ] = None,
     as_json: Annotated[
         bool, typer.Option("--json", help="Print the report, and nothing else, to standard output.")
@@ -94,7 +96,9 @@ def check(
     console = Console(stderr=True)
     with ExitStack() as stack:
         record = judging.beside(judging.judge(options, stack, console), listed)
-    report = judging.write_report(record, out)
+    report = judging.write_report(
+        record, options, {"conformance statement": ics, "list of known deviations": deviations}
+    )
     status = judging.exit_status(record)
     if status == INTERRUPTED:
         judging.say_interrupted(record, out, console)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from collections.abc import Mapping
 from contextlib import ExitStack
 from datetime import datetime
 from pathlib import Path
@@ -13,6 +14,8 @@ from rich.console import Console
 
 from protobench.cli import check
 from protobench.cli.cautions import CAUTIONS
+from protobench.cli.page import NAME as PAGE
+from protobench.cli.page import write_page
 from protobench.cli.progress import RunProgress
 from protobench.cli.summary import print_summary
 from protobench.contract import load_contract
@@ -143,12 +146,16 @@ def _open_log(options: RunOptions, stack: ExitStack) -> ConformanceLog | None:
     return log
 
 
-def write_report(record: RunRecord, out: Path | None) -> dict[str, Any]:
-    """Make the report and, with a folder, write it and the JUnit file."""
+def write_report(record: RunRecord, options: RunOptions, files: Mapping[str, Path | None]) -> dict[str, Any]:
+    """Make the report and, with a folder, write it, the page and the JUnit file.
+
+    ``files``: what the run was given, by purpose.
+    """
     report = build_report(record, load_contract())
-    if out is not None:
+    if (out := options.out) is not None:
         (out / "report.json").write_text(json.dumps(report, indent=2) + "\n", encoding="utf-8")
         (out / "junit.xml").write_bytes(junit_xml(record))
+        write_page(record, report, options, files)
     return report
 
 
@@ -158,7 +165,7 @@ def summarize(record: RunRecord, out: Path | None) -> None:
     print_summary(console, record, load_contract())
     if out is not None:
         console.print(
-            f"report: {out}/report.json, {out}/junit.xml, {out}/conformance.log",
+            f"report: {out}/{PAGE}, {out}/report.json, {out}/junit.xml, {out}/conformance.log",
             highlight=False,
             soft_wrap=True,
         )
@@ -166,7 +173,11 @@ def summarize(record: RunRecord, out: Path | None) -> None:
 
 def say_interrupted(record: RunRecord, out: Path | None, console: Console) -> None:
     """What an interrupted run has done and left, on standard error; its results are no results of a run."""
-    report = f"; partial report: {out}/report.json, {out}/junit.xml, {out}/conformance.log" if out else ""
+    report = (
+        f"; partial report: {out}/{PAGE}, {out}/report.json, {out}/junit.xml, {out}/conformance.log"
+        if out
+        else ""
+    )
     console.print(
         f"interrupted after {len(record.cases)} cases; the module has been sent a halt{report}",
         highlight=False,
