@@ -63,7 +63,7 @@ def test_ctrl_c_ends_with_130_and_a_halt(tmp_path: Path) -> None:
     assert process.returncode == 130, errors.decode()
     assert out == b""
     assert "interrupted after" in errors.decode()
-    assert f"partial report: {out_folder}/report.json, {out_folder}/junit.xml" in errors.decode()
+    assert f"partial report: {out_folder}/report.html, {out_folder}/report.json" in errors.decode()
     assert "Traceback" not in errors.decode()
     codec = load_codec()
     units = codec.split_part(b"\0" + log.read_bytes())
