@@ -15,6 +15,7 @@ from __future__ import annotations
 
 import functools
 import hashlib
+import shlex
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
@@ -68,6 +69,15 @@ class Restart(Model):
         le=RESTART_LONGEST_MS,
         description="Longest time from the means being used to the module starting, in ms.",
     )
+
+    @pd.field_validator("command")
+    @classmethod
+    def _splits(cls, command: str | None) -> str | None:
+        try:
+            shlex.split(command or "")
+        except ValueError as error:
+            raise ValueError(f"must be a command as in a shell ({error})") from None
+        return command
 
     @pd.model_validator(mode="after")
     def _one_means(self) -> Self:

@@ -18,8 +18,8 @@ WIDTH = 110
 HEAD = """\
 Conformance statement for {contract} {version} (ICS in the sense of ISO/IEC 9646-7).
 {origin}
-Every item may be left out, by a # before it; what is left out says nothing. Review the statement with
-"protobench ics review FILE", and with --link against the module; "protobench check --ics FILE" judges by it."""
+Every item may be left out, by a # before it; what is left out says nothing. "protobench ics review FILE"
+reviews the statement, with --link also against the module; "protobench check --ics FILE" judges by it."""
 EMPTY = "Take the # away from each line that you fill in."
 FILLED = (
     "Filled with what the module described. It is a statement once the supplier has checked every line of it."
