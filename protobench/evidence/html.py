@@ -13,7 +13,7 @@ from pathlib import Path
 from typing import Any
 
 import jinja2
-from markupsafe import Markup
+from markupsafe import Markup, escape
 
 from protobench.contract import Contract
 from protobench.evidence import failures, identity, matrix, plots
@@ -23,6 +23,7 @@ from protobench.judge import NOT_APPLICABLE, RunRecord
 TEMPLATES = Path(__file__).resolve().parent / "templates"
 ROWS_MAX = 200  # of a table made of values that this page knows nothing about
 VALUE_MAX = 300
+ROW_NAMES = {"items": "conditions that hold"}
 KNOWN = {"contract", "seed", "iut", "environment", "summary", "cases", "clauses", "stopped", "deviations"}
 WORDS = {
     "pass": "pass",
@@ -63,6 +64,7 @@ def html_report(
     )  # fmt: skip
     environment.filters["cut"] = lambda value, length=VALUE_MAX: cut(str(value), length)
     environment.filters["block"] = lambda value, length=2000: cut_block(str(value), length)
+    environment.filters["prose"] = prose
     environment.globals["words"] = WORDS
     page = environment.get_template("report.html.j2").render(
         style=Markup((TEMPLATES / "report.css").read_text(encoding="utf-8")),  # noqa: S704 - our own file
@@ -83,6 +85,14 @@ def html_report(
         more=[extra(name, value) for name, value in report.items() if name not in KNOWN and value],
     )
     return page + "\n"
+
+
+def prose(text: str) -> Markup:
+    """Text in which what stands between back quotes is a name of the contract."""
+    return Markup("").join(
+        Markup("<code>{}</code>").format(part) if place % 2 else escape(part)
+        for place, part in enumerate(text.split("`"))
+    )
 
 
 def title_of(record: RunRecord) -> str:
@@ -110,11 +120,7 @@ def identity_rows(
     record: RunRecord, contract: Contract, particulars: Particulars
 ) -> list[tuple[str, list[tuple[str, str]]]]:
     """Module, contract, bench and run, each with its facts."""
-    iut, environment = record.iut, dict(record.environment)
-    items = iut.get("items")
-    module = [(name.replace("_", " "), _value(value)) for name, value in iut.items() if name != "items"]
-    if isinstance(items, list):
-        module.append(("items of the statement that apply", ", ".join(str(item) for item in items)))
+    environment = dict(record.environment)
     bench = [
         ("version", _value(environment.pop("bench", ""))),
         ("digest of its sources", identity.bench_digest()),
@@ -132,19 +138,31 @@ def identity_rows(
         run.append(
             (purpose, f"{cut(path.name, 100)}, digest {identity.file_digest(path) or 'not to be had'}")
         )
-    return [
-        ("Module, as it describes itself", module),
-        (
-            "Contract",
-            [
-                ("name", contract.name),
-                ("version", contract.version),
-                ("digest of its tables", identity.contract_digest(contract.version)),
-            ],
-        ),
-        ("Bench", bench),
-        ("Run", run),
+    data = [
+        ("name", contract.name),
+        ("version", contract.version),
+        ("digest of its tables", identity.contract_digest(contract.version)),
     ]
+    return [
+        ("Run", run),
+        ("Contract", data),
+        ("Bench", bench),
+        ("Module, as it describes itself", _module_rows(record.iut, contract)),
+    ]
+
+
+def _module_rows(iut: Mapping[str, object], contract: Contract) -> list[tuple[str, str]]:
+    bits = {
+        "capabilities": {capability.number: capability.name for capability in contract.capabilities},
+        "motions": {number: name for name, number in contract.enum_values("motion").items()},
+    }
+    rows = []
+    for name, value in iut.items():
+        shown = _value(value)
+        if name in bits and isinstance(value, int):
+            shown = ", ".join(word for bit, word in bits[name].items() if value >> bit & 1) or "none"
+        rows.append((ROW_NAMES.get(name, name.replace("_", " ")), shown))
+    return rows
 
 
 def _value(value: object) -> str:

@@ -252,6 +252,8 @@ def note_of(explanation: Explanation) -> str:
     lines = [line for line in explanation.body if line.name and (wanted is None or line.name in wanted)]
     if wanted is None:
         lines = lines[:2]
+    else:
+        lines.sort(key=lambda line: wanted.index(line.name))
     told = ", ".join(
         f"{line.name} {_short(line.value)}{f' {line.unit}' if line.unit else ''}" for line in lines
     )
