@@ -67,7 +67,7 @@ class Sent:
 
 @dataclass(slots=True)
 class Received:
-    """A frame of the module: what the bench got, when, and what it says."""
+    """A frame of the module: what the bench got, and what it says. ``time_ns``: when its first byte arrived."""
 
     time_ns: int
     frame_bytes: bytes
@@ -100,6 +100,7 @@ class Port:
         self.watch = Watch(language.contract)
         self._decoder = language.stream_decoder()
         self._last_sent_ns: int | None = None
+        self._begun_ns = 0  # when the frame that is half here began to arrive
         self._lateness_ns = 0
         self._begin_ns = link.clock.now_ns()
 
@@ -223,7 +224,8 @@ class Port:
     def _expire(self) -> None:
         if self.link.framing is Framing.STREAM:
             for unit in self._decoder.expire(self.now_ns):
-                self._unit(unit, self.now_ns)
+                self._unit(unit, self.now_ns, self.now_ns)
+                self._begun_ns = 0
 
     def _take(self, chunk: Chunk) -> None:
         if self.link.framing is Framing.STREAM:
@@ -233,9 +235,14 @@ class Port:
         else:
             units = [chunk.data]
         for unit in units:
-            self._unit(unit, chunk.time_ns)
+            self._unit(unit, chunk.time_ns, self._begun_ns or chunk.time_ns)
+            self._begun_ns = 0
+        if not self._decoder.holds_half:
+            self._begun_ns = 0
+        elif not self._begun_ns:
+            self._begun_ns = chunk.time_ns
 
-    def _unit(self, unit: bytes | Dropped, time_ns: int) -> None:
+    def _unit(self, unit: bytes | Dropped, time_ns: int, begun_ns: int) -> None:
         if isinstance(unit, Dropped):
             self._dropped(unit, time_ns)
             return
@@ -245,9 +252,9 @@ class Port:
             return
         reading = self.language.read(unit)
         self._record("<-", time_ns, unit, reading)
-        self.watch.received(unit, reading, time_ns)
+        self.watch.received(unit, reading, begun_ns)
         if reading.fields is not None:
-            self.inbox.append(Received(time_ns, unit, frame, reading.kind, reading.fields))
+            self.inbox.append(Received(begun_ns, unit, frame, reading.kind, reading.fields))
 
     def _dropped(self, dropped: Dropped, time_ns: int) -> None:
         self._record("<-", time_ns, dropped.data, f"{dropped.reason}: {dropped.detail}")

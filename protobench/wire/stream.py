@@ -38,6 +38,11 @@ class StreamDecoder:
         self._last_ns = 0
 
     @property
+    def holds_half(self) -> bool:
+        """Whether a frame has begun to arrive and is not whole."""
+        return bool(self._tail)
+
+    @property
     def deadline_ns(self) -> int | None:
         """When the half frame now held must be discarded, or None when none is held."""
         if not self._tail:
