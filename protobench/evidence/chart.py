@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from html import escape
 
 from protobench.evidence.sequence import MODULE, Chart, Condition, End, Message, Wait, order
-from protobench.evidence.text import plain
+from protobench.evidence.text import cut, plain
 
 TIME_WIDTH = 104
 HEAD_HEIGHT = 58
@@ -21,7 +21,8 @@ WAIT_HEIGHT = 34
 FOOT_HEIGHT = 26
 SLOPE = 7  # a message arrives below where it left
 LOST_AT = 0.62  # of the way
-GLYPH = 6.3  # width of a character of a label, on average, px
+GLYPH = 6.3  # width of a character of a note, on average, px
+BOLD_GLYPH = 6.9  # of a label
 
 
 @dataclass(frozen=True, slots=True)
@@ -110,7 +111,7 @@ def _message(message: Message, number: int, layout: Layout) -> Iterable[str]:
     yield f'<circle cx="{end}" cy="{y_in}" r="5"/>' if lost else _tip(begin, end, y_in)
     seen_at = y_in if message.source == MODULE else y_out
     yield f'<text class="time" x="{TIME_WIDTH - 20}" y="{seen_at + 4}">{message.time_ns / 1e6:.3f}</text>'
-    longest = max(len(message.label), len(message.note)) * GLYPH / 2
+    longest = max(len(message.label) * BOLD_GLYPH, len(message.note) * GLYPH) / 2
     x = min(max((begin + end) / 2, TIME_WIDTH + longest - 12), layout.width - longest - 4)
     yield f'<text class="label" x="{x:.0f}" y="{y_out - 4}">{_text(message.label)}</text>'
     if message.note:
@@ -126,14 +127,14 @@ def _tip(begin: int, end: int, y: int) -> str:
 def _condition(condition: Condition, top: int, layout: Layout) -> Iterable[str]:
     """A hexagon over the axes that it speaks of."""
     over = [x for key, x in layout.axes.items() if not condition.axes or key in condition.axes]
-    half = max(len(condition.text) * GLYPH / 2 + 22, (max(over) - min(over)) / 2 + 70)
-    middle = (max(over) + min(over)) / 2
-    half = min(half, (layout.width - TIME_WIDTH) / 2 + 10)
-    middle = min(middle, layout.width - half - 4)
+    most = layout.width - TIME_WIDTH + 12
+    text = cut(condition.text, int((most - 40) / BOLD_GLYPH))
+    half = min(max(len(text) * BOLD_GLYPH / 2 + 18, (max(over) - min(over)) / 2 + 70), most / 2)
+    middle = min((max(over) + min(over)) / 2, layout.width - half - 3)
     left, right, y = round(middle - half), round(middle + half), top + 4
     tone = f" {condition.tone}" if condition.tone else ""
     yield f'<g class="condition{tone}"><path d="M{left} {y + 12}l12 -12H{right - 12}l12 12l-12 12H{left + 12}z"/>'
-    yield f'<text class="label" x="{(left + right) / 2:.0f}" y="{y + 16}">{_text(condition.text)}</text></g>'
+    yield f'<text class="label" x="{(left + right) / 2:.0f}" y="{y + 16}">{_text(text)}</text></g>'
 
 
 def _wait(wait: Wait, top: int, layout: Layout) -> Iterable[str]:

@@ -10,7 +10,7 @@ from markupsafe import Markup
 from protobench.contract import Contract
 from protobench.evidence.chart import svg
 from protobench.evidence.matrix import anchor
-from protobench.evidence.sequence import Builder
+from protobench.evidence.sequence import Builder, parts
 from protobench.evidence.text import cut, cut_block
 from protobench.judge import CaseRecord, Exchange, RunRecord
 from protobench.wire import load_codec
@@ -21,6 +21,7 @@ REASON_MAX = 1200
 DETAIL_MAX = 6000
 WORDS_MAX = 400
 HEX_MAX = 256  # bytes
+ITEMS_A_PIECE = 18  # of a chart, so that a piece fits on a page of paper
 OPEN_MOST = 6  # with more failures than that the frames are folded on the screen
 ORDER = {word: place for place, word in enumerate(("fail", "error", "known_deviation", "inconc"))}
 
@@ -74,17 +75,19 @@ def failures(record: RunRecord, contract: Contract, names: Mapping[int, str]) ->
 def _failure(
     case: CaseRecord, ident: str, last: int, contract: Contract, builder: Builder, *, is_open: bool
 ) -> Failure:
-    chart = ""
+    pieces = []
     if case.exchange:
         first_line = case.reason.partition("\n")[0]
         drawn = builder.chart(case.exchange, last, case.verdict.replace("_", " "), first_line)
-        chart = svg(drawn, ident, f"Sequence chart of {case.id}: {cut(first_line, 200)}")
+        for number, piece in enumerate(parts(drawn, ITEMS_A_PIECE), 1):
+            title = f"Sequence chart of {case.id}, part {number}: {cut(first_line, 200)}"
+            pieces.append(svg(piece, f"{ident}-{number}", title))
     return Failure(
         case=case,
         anchor=anchor(case),
         reason=cut_block(case.reason, REASON_MAX),
         clauses=tuple(_clauses(case, contract)),
-        chart=Markup(chart),  # noqa: S704 - made by chart.svg, which escapes every text
+        chart=Markup("".join(pieces)),  # noqa: S704 - made by chart.svg, which escapes every text
         frames=tuple(_row(exchange) for exchange in case.exchange[-last:]),
         detail="" if case.exchange else cut_block(case.detail, DETAIL_MAX),
         left_out=max(0, len(case.exchange) - last),

@@ -8,12 +8,13 @@ known by that order alone, and no chart claims more.
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from math import ceil
 from typing import NamedTuple
 
 from protobench.evidence.text import cut
 from protobench.judge import Exchange
-from protobench.wire import Codec, Explanation, Frame, explain_frame
+from protobench.wire import Codec, Dropped, Explanation, Frame, Line, explain_frame
 
 WAIT_LEAST_NS = 20_000_000  # a shorter pause is not drawn as a wait
 AXES_MAX = 6
@@ -92,6 +93,13 @@ class Chart:
     left_out: int = 0
 
 
+def parts(chart: Chart, most: int) -> list[Chart]:
+    """The chart in pieces of at most so many items, each with the same axes, so that each fits on a page."""
+    count = max(len(chart.items), 1)
+    each = ceil(count / ceil(count / most))
+    return [replace(chart, items=chart.items[first : first + each]) for first in range(0, count, each)]
+
+
 class End(NamedTuple):
     """One end of the message that is item number ``item``."""
 
@@ -154,37 +162,56 @@ class Builder:
         return Chart(axes.instances(), tuple(items), len(exchange) - len(shown))
 
     def _items(self, passed: Exchange, axes: _Axes, told: dict[str, str]) -> list[Item]:
-        data = passed.data
-        frame = self._codec.frames.unpack(data)
-        if not isinstance(frame, Frame):
-            return [self._unsound(passed, axes)]
-        explanation = explain_frame(self._codec, data)
+        frame = self._codec.frames.unpack(passed.data)
+        if isinstance(frame, Dropped):
+            return [self._unsound(passed, frame, axes)]
+        explanation = explain_frame(self._codec, passed.data)
         label = cut(f"{explanation.kind or f'kind 0x{frame.kind:02x}'} #{frame.number}", LABEL_MAX)
-        note = cut(note_of(explanation), NOTE_MAX)
+        many = self._many(frame)
+        note = cut(", ".join(filter(None, (many, note_of(explanation)))), NOTE_MAX)
         if passed.direction == "<-":
             items: list[Item] = list(self._conditions(passed.time_ns, explanation, told))
-            to = axes.bench(frame.destination)
-            return [*items, Message(passed.time_ns, MODULE, to, label, note)]
+            return [*items, Message(passed.time_ns, MODULE, axes.bench(frame.destination), label, note)]
         source = axes.bench(frame.source)
         if explanation.dropped is not None:
-            dropped = f"must be dropped: {explanation.dropped.reason}"
-            return [Message(passed.time_ns, source, None, label, dropped)]
-        if self._is_for_another(frame.destination):
+            return [
+                Message(passed.time_ns, source, None, label, f"must be dropped: {explanation.dropped.reason}")
+            ]
+        if not many and frame.destination not in (self._module, 0):
             return [Message(passed.time_ns, source, None, label, f"for 0x{frame.destination:x}")]
         return [Message(passed.time_ns, source, MODULE, label, note)]
 
-    def _unsound(self, passed: Exchange, axes: _Axes) -> Message:
+    def _many(self, frame: Frame) -> str:
+        addresses = self._codec.contract.addresses
+        if frame.destination == addresses.broadcast:
+            return "to all"
+        if frame.destination == addresses.any_controller:
+            return "to any controller"
+        return f"to group 0x{frame.destination:x}" if frame.destination > addresses.unicast_last else ""
+
+    def _unsound(self, passed: Exchange, dropped: Dropped, axes: _Axes) -> Message:
+        """Bytes that are no sound frame by themselves; sent raw, they may hold some."""
         size = f"{len(passed.data)} bytes"
         if passed.direction == "<-":
             return Message(
                 passed.time_ns, MODULE, axes.bench(None), "no sound frame", cut(passed.words, NOTE_MAX)
             )
-        inner = [unit for unit in self._codec.split_part(b"\0" + passed.data) if isinstance(unit, bytes)]
-        frames = [found for unit in inner if isinstance(found := self._codec.frames.unpack(unit), Frame)]
+        units = self._codec.split_part(b"\0" + passed.data)
+        sound = (self._codec.frames.unpack(unit) for unit in units if isinstance(unit, bytes))
+        frames = [frame for frame in sound if isinstance(frame, Frame)]
         if not frames:
-            return Message(passed.time_ns, axes.bench(None), None, "raw bytes", f"{size}, no sound frame")
-        held = f"{len(frames)} sound frame{'s' if len(frames) > 1 else ''} in {size}"
+            note = cut(f"{size}, must be dropped: {dropped.reason}", NOTE_MAX)
+            return Message(
+                passed.time_ns, axes.bench(self._claimed(passed.data)), None, "no sound frame", note
+            )
+        held = f"{size} with {len(frames)} sound frame{'s' if len(frames) > 1 else ''}"
         return Message(passed.time_ns, axes.bench(frames[0].source), MODULE, "raw bytes", held)
+
+    def _claimed(self, data: bytes) -> int | None:
+        """The bench's own address that stands where a source would, if one does."""
+        field = next(field for field in self._codec.frames.layout.fields if field.name == "source")
+        source = int.from_bytes(data[field.offset : field.offset + field.size], "big")
+        return source if source in self._names else None
 
     def _conditions(self, time_ns: int, explanation: Explanation, told: dict[str, str]) -> list[Condition]:
         """What the module says of its latches and restarts, where it is news in this chart."""
@@ -203,10 +230,6 @@ class Builder:
         if explanation.kind == "started":
             found.append(Condition(time_ns, cut(f"restarted, epoch {values.get('epoch')}", 40), (MODULE,)))
         return found
-
-    def _is_for_another(self, destination: int) -> bool:
-        last = self._codec.contract.addresses.unicast_last
-        return destination <= last and destination not in (self._module, 0)
 
 
 class _Axes:
@@ -236,7 +259,7 @@ class _Axes:
         rank = {address: place for place, address in enumerate(self._names)}
         addresses = sorted(self._seen, key=lambda address: (rank.get(address, len(rank)), address))
         found = [
-            Instance(f"{address:x}", self._names.get(address, "controller"), f"0x{address:x}")
+            Instance(f"{address:x}", self._names.get(address, "bench"), f"0x{address:x}")
             for address in addresses
         ]
         if self._others:
@@ -248,21 +271,24 @@ def note_of(explanation: Explanation) -> str:
     """The fields of a body that matter most to a reader, in short."""
     if explanation.dropped is not None:
         return f"dropped: {explanation.dropped.reason}"
+    if explanation.problems:
+        return f"body breaks the contract: {explanation.problems[0]}"
     wanted = TOLD.get(explanation.kind)
     lines = [line for line in explanation.body if line.name and (wanted is None or line.name in wanted)]
     if wanted is None:
         lines = lines[:2]
     else:
         lines.sort(key=lambda line: wanted.index(line.name))
-    told = ", ".join(
-        f"{line.name} {_short(line.value)}{f' {line.unit}' if line.unit else ''}" for line in lines
-    )
+    told = ", ".join(filter(None, (_told(line) for line in lines)))
     if explanation.kind in SELF_REPORTS:
         return f"self-report: {told}"
     return told
 
 
-def _short(value: str) -> str:
-    """An enumeration's value without its number."""
-    name, _, number = value.partition(" (")
-    return name if number.rstrip(")").isdigit() else value
+def _told(line: Line) -> str:
+    """A field in short: an enumeration without its number, a flag by its name when it is set."""
+    if line.value in ("true", "false"):
+        return line.name.replace("_", " ") if line.value == "true" else ""
+    name, _, number = line.value.partition(" (")
+    value = name if number.rstrip(")").isdigit() else line.value
+    return f"{line.name} {value}{f' {line.unit}' if line.unit else ''}"

@@ -86,7 +86,7 @@ class Port:
     """Frames over one link.
 
     ``inbox`` holds what no expectation has taken yet, in order of arrival; ``events`` the last of what passed in the
-    case, of ``events_seen`` in all.
+    case, of ``events_seen`` in all; ``violated_at``: how many there were when the watch first found something.
     """
 
     def __init__(self, link: Link, language: Language, log: Log | None = None) -> None:
@@ -97,6 +97,7 @@ class Port:
         self.inbox: list[Received] = []
         self.events: deque[Event] = deque(maxlen=EVENTS_MAX)
         self.events_seen = 0
+        self.violated_at: int | None = None
         self.watch = Watch(language.contract)
         self._decoder = language.stream_decoder()
         self._last_sent_ns: int | None = None
@@ -131,6 +132,7 @@ class Port:
         """Forget what earlier cases left: events, inbox, measured lateness."""
         self.events.clear()
         self.events_seen = 0
+        self.violated_at = None
         self.inbox.clear()
         self.watch.begin_case()
         self._lateness_ns = 0
@@ -184,6 +186,8 @@ class Port:
             self._expire()
             return False
         self._take(chunk)
+        if self.violated_at is None and self.watch.violations:
+            self.violated_at = self.events_seen
         return True
 
     def wait_ms(self, milliseconds: float) -> None:
