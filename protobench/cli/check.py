@@ -43,6 +43,13 @@ def check(
             help="Known deviations (TOML): failures expected until a date, each with case, reason and owner.",
         ),
     ] = None,
+    restart: Annotated[
+        bool,
+        typer.Option(
+            "--restart",
+            help="The statement's means of restarting the module may be used; it may run a program.",
+        ),
+    ] = False,
     only: Annotated[
         str | None,
         typer.Option(help="Cases to judge: words of ids, areas, classes or clause ids, with and, or, not."),
@@ -83,6 +90,7 @@ def check(
         return
     options = judging.make_options(
         ics=ics,
+        restart=restart,
         virtual=virtual,
         link=link,
         address=address,

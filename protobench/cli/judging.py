@@ -66,6 +66,8 @@ def list_cases(level: str, only: str | None, *, as_json: bool) -> None:
 def make_options(*, ics: Path | None, virtual: bool, **options: Any) -> RunOptions:
     """Options of the run; a statement that cannot be read ends the command."""
     statement = read_statement(ics, "--ics") if ics is not None else None
+    if options["restart"] and statement is None:
+        raise typer.BadParameter("--restart needs --ics with a table testing.restart", param_hint="--restart")
     return RunOptions(statement=statement, virtual=virtual or None, **options)
 
 
@@ -108,11 +110,18 @@ def judge(options: RunOptions, stack: ExitStack, console: Console) -> RunRecord:
     """
     if options.attended:
         console.print(CAUTIONS, highlight=False)
+    if options.restart and options.statement is not None:
+        console.print(
+            f"restart of the module, as {options.statement.file} says: {options.statement.restart_words}",
+            highlight=False,
+            soft_wrap=True,
+            markup=False,
+        )
     log = _open_log(options, stack)
     progress = stack.enter_context(RunProgress(console, log))
     try:
         return run.run_suite(options, progress, log)
-    except (run.NeedsAttendance, BadAddress, NoVirtualTime) as error:
+    except (run.NeedsAttendance, run.NoRestart, BadAddress, NoVirtualTime) as error:
         message, status = str(error), check.WRONG_USE
     except (run.StatementDiffers, Failed) as error:
         message, status = str(error), check.FAILED

@@ -14,7 +14,7 @@ from enum import Enum
 from types import TracebackType
 from typing import NamedTuple, Protocol, Self
 
-from protobench.links.errors import LinkClosed
+from protobench.links.errors import LinkClosed, NoControlLine
 
 _CHUNK_COST_BYTES = 64  # counted for each chunk on top of its length, so that empty ones are bounded too
 
@@ -161,6 +161,12 @@ class Link(ABC):
         """Wait until nothing that was sent is held back, at most to ``deadline_ns``; whether that is so."""
         self._check_open()
         return True
+
+    def pulse(self, line: str, duration_ms: int) -> None:  # noqa: ARG002 - serial links have lines
+        """Turn a control line (``dtr``, ``rts``) over for a while, and back. Raises NoControlLine."""
+        raise NoControlLine(
+            f"{self.name}: pulse {line}", "this link has no control lines", "use a serial device"
+        )
 
     def close(self) -> None:
         """Give up the link and all it holds. Closing again does nothing."""

@@ -52,6 +52,10 @@ class NoVirtualTime(LinkError):
     """Virtual time was asked of a link that has only real time."""
 
 
+class NoControlLine(LinkError):
+    """The link has no such control line, or the device does not let it be set."""
+
+
 class LinkClosed(LinkError):
     """The link was used after its own ``close()``."""
 

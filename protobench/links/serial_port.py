@@ -13,7 +13,14 @@ from pathlib import Path
 import serial
 
 from protobench.links.base import DEFAULT_LIMITS, Chunk, Framing, Limits
-from protobench.links.errors import BadAddress, LinkError, NoSuchDevice, PeerClosed, from_os_error
+from protobench.links.errors import (
+    BadAddress,
+    LinkError,
+    NoControlLine,
+    NoSuchDevice,
+    PeerClosed,
+    from_os_error,
+)
 from protobench.links.realtime import READ_BYTES, DescriptorLink, RealTimeLink
 
 DEFAULT_BAUD = 115_200
@@ -66,6 +73,10 @@ class SerialLink(DescriptorLink):
             raise self._end(error) from error
         return True
 
+    def pulse(self, line: str, duration_ms: int) -> None:
+        self._check_open()
+        _pulse(self.name, self._port, line, duration_ms)
+
     def _read(self) -> bytes:
         if not self._reading.poll(0):  # an empty read means "nothing there" as well as "gone"
             raise BlockingIOError
@@ -117,6 +128,10 @@ class SerialUrlLink(RealTimeLink):
             raise self._end(error) from error
         return self.clock.now_ns()
 
+    def pulse(self, line: str, duration_ms: int) -> None:
+        self._check_open()
+        _pulse(self.name, self._port, line, duration_ms)
+
     def _pull(self) -> bool:
         try:
             data = self._port.read(READ_BYTES)
@@ -137,3 +152,14 @@ class SerialUrlLink(RealTimeLink):
 
     def _close(self) -> None:
         self._port.close()
+
+
+def _pulse(name: str, port: serial.SerialBase, line: str, duration_ms: int) -> None:
+    before = getattr(port, line)
+    try:
+        setattr(port, line, not before)
+        time.sleep(duration_ms / 1000)
+        setattr(port, line, before)
+    except (OSError, ValueError) as error:
+        advice = "use a device with this line, not a pty"
+        raise NoControlLine(f"{name}: pulse {line}", f"it cannot be set ({error})", advice) from error

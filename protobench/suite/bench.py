@@ -11,6 +11,7 @@ from protobench.links import Link
 from protobench.suite.facts import Facts, MotionFacts, derive_items
 from protobench.suite.language import Language
 from protobench.suite.port import Log, Port, Received
+from protobench.suite.restart import OutsideRestart
 from protobench.suite.tester import PATIENCE_MS, Tester
 from protobench.wire import Codec
 
@@ -32,7 +33,8 @@ class Bench:
     """The bench as a case sees it.
 
     ``a`` and ``b``: two controllers with fresh sessions. ``facts``: what the module declares. ``rng``: seeded for
-    the case. ``raised``: fault codes whose condition the case raised.
+    the case. ``raised``: fault codes whose condition the case raised. ``outside_restart``: restarts the module where
+    a way to do so from outside is known.
     """
 
     def __init__(
@@ -48,6 +50,7 @@ class Bench:
         self.facts = Facts()
         self.rng = random.Random(seed)
         self.raised: set[int] = set()
+        self.outside_restart: OutsideRestart | None = None
         self._testers: list[Tester] = []
         self.a = self.b = Tester(self, CONTROLLER_A, self.rng)
 
@@ -71,6 +74,8 @@ class Bench:
         self.facts.description = dict(description.fields)
         self.facts.motions = motions
         self.facts.items = derive_items(self.contract, description.fields, motions, self.link_items())
+        if self.outside_restart is not None:
+            self.facts.items |= {"restart"}
         self._wait_started()
 
     def _wait_started(self) -> None:

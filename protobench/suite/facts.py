@@ -108,6 +108,7 @@ def derive_items(
     items |= link_items
     travels = [motion for motion in motions.values() if motion.name not in BONDING]
     conditions = {
+        "restart": "assist" in items,
         "bonds": description.get("faces", 0) >= 1 and all(name in motions for name in BONDING),
         "ballistic": any(motion.no_return_ms for motion in travels),
         "stoppable": any(motion.stoppable_ms >= STOPPABLE_MS for motion in travels),

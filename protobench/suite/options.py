@@ -25,6 +25,7 @@ class RunOptions:
     one whose statement breaks the contract is sent nothing.
     ``level``: ``required`` or ``recommended`` (which includes the required ones).
     ``attended``: someone stands by, so what can move hardware may be sent.
+    ``restart``: the statement's means of restarting the module may be used; it may run a program.
     ``reads_only``: the module is asked what it is and not judged, so a physical one needs nobody beside it.
     ``opener``: opens the link instead of ``link``; the text then only names it.
     """
@@ -38,6 +39,7 @@ class RunOptions:
     out: Path | None = None
     attended: bool = False
     virtual: bool | None = None
+    restart: bool = False
     reads_only: bool = False
     opener: LinkOpener | None = None
 

@@ -11,10 +11,19 @@ from protobench.judge import RunRecord
 from protobench.suite.case import LEVELS, CaseInfo, registered
 from protobench.suite.options import Observer, RunOptions
 from protobench.suite.port import Log
+from protobench.suite.restart import NoRestart
 from protobench.suite.selection import select
 from protobench.suite.session import NeedsAttendance, Session, StatementDiffers
 
-__all__ = ["INTERRUPTED", "Interrupted", "NeedsAttendance", "StatementDiffers", "list_cases", "run_suite"]
+__all__ = [
+    "INTERRUPTED",
+    "Interrupted",
+    "NeedsAttendance",
+    "NoRestart",
+    "StatementDiffers",
+    "list_cases",
+    "run_suite",
+]
 
 INTERRUPTED = "interrupted"
 
@@ -45,9 +54,9 @@ def list_cases(level: str = "recommended", only: str | None = None) -> list[Case
 def run_suite(options: RunOptions, observer: Observer | None = None, log: Log | None = None) -> RunRecord:
     """Judge a module by the selected cases.
 
-    Raises NeedsAttendance, StatementDiffers, NoModule, LinkError, ContractError before the first case. A run that
-    cannot go on keeps what it has and says why in ``stopped``. When it is interrupted the module is sent a halt, and
-    Interrupted is raised with what it has.
+    Raises NeedsAttendance, NoRestart, StatementDiffers, NoModule, LinkError, ContractError before the first case. A
+    run that cannot go on keeps what it has and says why in ``stopped``. When it is interrupted the module is sent a
+    halt, and Interrupted is raised with what it has.
     """
     selected = list_cases(options.level, options.only)
     with Session(options, log) as session:

@@ -25,6 +25,7 @@ from protobench.suite.bench import Bench
 from protobench.suite.case import CaseInfo
 from protobench.suite.options import RunOptions
 from protobench.suite.port import Log
+from protobench.suite.restart import NoRestart, OutsideRestart, outside_restart
 from protobench.suite.statement_review import compare, review
 from protobench.suite.statement_select import why_not
 from protobench.suite.targets import embedded_link
@@ -106,6 +107,8 @@ class Session:
             bench = Bench(link, self.contract, self.codec, self.options.seed, self._log)
             statement = self.options.statement
             address = self.options.address
+            if self.options.restart:
+                bench.outside_restart = self._restart_means(link)
             bench.discover(statement.address if statement is not None and address is None else address)
             self._compare_statement(bench)
             if not (bench.facts.emulated or self.options.attended or self.options.reads_only):
@@ -117,6 +120,16 @@ class Session:
             link.close()
             raise
         return bench
+
+    def _restart_means(self, link: Link) -> OutsideRestart:
+        means = outside_restart(self.options.statement, link)
+        if means is None:
+            file = self.options.statement.file if self.options.statement is not None else "no statement"
+            raise NoRestart(
+                f"{file} names no means of restarting that the bench can use over this link: "
+                "a command, in real time, or a line of a serial device"
+            )
+        return means
 
     def _need_attendance(self, name: str) -> None:
         if not self.options.attended:
@@ -202,6 +215,8 @@ class Session:
                 self._attempt(lambda: info.function(self.bench), found)
             shown = self.bench.port.events_seen if found else None
             self._attempt(self.bench.end, found, "postamble: ")
+            if not found:
+                shown = self.bench.port.violated_at
             found += [
                 Finding(Verdict.FAIL, f"{violation.clause}: {violation.reason}", violation.clause)
                 for violation in self.bench.port.watch.violations
@@ -260,6 +275,8 @@ class Session:
         command += ["--address", str(self.bench.address), "--seed", str(self.options.seed), "--only", info.id]
         if self.options.statement is not None:
             command += ["--ics", self.options.statement.file]
+        if self.options.restart:
+            command.append("--restart")
         if self.options.attended:
             command.append("--attended")
         return shlex.join(command)

@@ -132,6 +132,14 @@ class Statement:
         return clauses
 
     @property
+    def restart_words(self) -> str:
+        """How the module is restarted from outside, in words; ``nothing`` where that is not stated."""
+        means = self.testing.restart if self.testing is not None else None
+        if means is None:
+            return "nothing"
+        return next(f"{name} {value}" for name, value in means.model_dump(exclude_none=True).items())
+
+    @property
     def address(self) -> int | None:
         """The module's address; None when it is not stated."""
         return self.table("module").get("address")

@@ -15,6 +15,7 @@ FOLLOWS_FROM: Mapping[str, tuple[str, ...]] = {
     "stoppable": ("motion.*.no_return_ms", "motion.*.typical_ms"),
     "holding": ("motion.*.halt_category",),
     "travel": ("motions",),
+    "restart": ("capabilities",),
 }
 
 
@@ -46,6 +47,14 @@ def _denied(info: CaseInfo, statement: Statement) -> str | None:
 
 def _source(name: str, statement: Statement, contract: Contract) -> str:
     """Where it comes from that a module has, or has not, an item."""
+    means = statement.testing.restart if statement.testing is not None else None
+    if name == "restart" and means is not None:
+        why = (
+            "names an operator, whom the bench does not ask"
+            if means.operator
+            else "is used with --restart only"
+        )
+        return f"{statement.file}: testing.restart {why}"
     if name in {capability.name for capability in contract.capabilities}:
         fields = ["capabilities"] if statement.capabilities is not None else []
     elif name in FOLLOWS_FROM:

@@ -326,7 +326,7 @@ def test_assign(bench: Bench) -> None:
         bench.a.send("status", to=old)
         bench.address = new
         bench.a.silent("the old address", "ADR-12")
-        if bench.facts.has("assist"):
+        if bench.facts.has("restart"):
             bench.a.restart()
             bench.a.status()
     finally:
@@ -370,7 +370,11 @@ def test_assign_state(bench: Bench) -> None:
     bench.a.accepted("de-energize", clause="STA-10")
     with expect_silent_refusals(bench, 1, "ADR-16"):
         bench.b.send(
-            "assign-address", to=bench.broadcast, hardware_id=own, address=bench.other_address(9), answer_window=10
+            "assign-address",
+            to=bench.broadcast,
+            hardware_id=own,
+            address=bench.other_address(9),
+            answer_window=10,
         )
         bench.port.wait_ms(40)
     bench.a.silent("an assignment while another holds the lease", "ADR-16")
@@ -416,7 +420,7 @@ def test_groups(bench: Bench) -> None:
         _set_groups(bench, [0xF0000008])
         if _probe_answered(bench.a, GROUPS[0]) or not _probe_answered(bench.a, 0xF0000008):
             raise Failed("set-groups must replace the whole membership", clause="ADR-13")
-        if bench.facts.has("assist"):
+        if bench.facts.has("restart"):
             _set_groups(bench, list(GROUPS[:count]))
             bench.a.restart()
             if list(bench.a.read("read-groups")["groups"]) != list(GROUPS[:count]):

@@ -43,7 +43,7 @@ def test_steady(bench: Bench) -> None:
         )
     bench.a.take_lease()
     second = bench.a.read("describe")
-    if bench.facts.has("assist"):
+    if bench.facts.has("restart"):
         second = bench.a.restart()
     changed = [name for name in STEADY if first[name] != second[name]]
     if changed:
@@ -159,7 +159,7 @@ def test_identify(bench: Bench) -> None:
     "valid",
     "The position is unknown after a start until a motion other than bond and unbond ends done.",
     clauses=["DSC-07"],
-    needs="assist and travel",
+    needs="restart and travel",
 )
 def test_position(bench: Bench) -> None:
     a = bench.a

@@ -426,7 +426,7 @@ def test_renew_many(bench: Bench) -> None:
     "valid",
     "A restart ends the lease and numbers begin again at 0.",
     clauses=["LSE-13"],
-    needs="assist",
+    needs="restart",
 )
 def test_restart(bench: Bench) -> None:
     a = bench.a

@@ -443,7 +443,7 @@ def test_stale_lease(bench: Bench) -> None:
     "inopportune",
     "A restart raises the epoch by one, empties the history, and nothing from before it acts.",
     clauses=["SEQ-16", "SEQ-17", "SEQ-14"],
-    needs="assist",
+    needs="restart",
 )
 def test_restart(bench: Bench) -> None:
     a = bench.a

@@ -254,7 +254,7 @@ def test_outlasts_lease(bench: Bench) -> None:
     a.accepted("release-lease", clause="LSE-11")
     if len(_telemetry(bench, sent, 200)) < 4:
         raise Failed("telemetry ended with the lease", clause="TIM-09")
-    if bench.facts.has("assist"):
+    if bench.facts.has("restart"):
         a.restart()
         bench.port.take_all(lambda received: received.kind == "telemetry")
         if _telemetry(bench, sent, 150):

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import json
+import shlex
+import sys
 import tomllib
 from pathlib import Path
 
@@ -159,3 +161,90 @@ def test_help_has_statuses_and_an_example(command: str) -> None:
     text = words(invoke("ics", command, "--help").stdout)
     assert "Exit status: 0" in text
     assert "Example: protobench ics" in text
+
+
+NEEDING_RESTART = "LSE.restart or SEQ.restart or DSC.position"
+
+
+def restartable(tmp_path: Path, command: str) -> tuple[str, Path]:
+    """Link to a module without assist, and a statement that says how it is restarted."""
+    form = tmp_path / "module.toml"
+    form.write_text(f"[testing]\nassist = false\n[testing.restart]\ncommand = {json.dumps(command)}\n")
+    module = Path(__file__).with_name("restartable_module.py")
+    return "run:" + shlex.join((sys.executable, str(module), str(tmp_path / "restart"))), form
+
+
+def test_a_module_without_assist_is_restarted_by_the_means_of_its_statement(tmp_path: Path) -> None:
+    link, form = restartable(tmp_path, shlex.join(("touch", str(tmp_path / "restart"))))
+    arguments = (
+        "check",
+        "--link",
+        link,
+        "--ics",
+        str(form),
+        "--only",
+        f"{NEEDING_RESTART} or VER.unknown-kind",
+    )
+    done = run(*arguments)
+    assert done.returncode == 0, done.stdout.decode() + done.stderr.decode()
+    assert "1 pass, 3 not applicable" in done.stdout.decode()
+    assert "restart of the module" not in done.stderr.decode()
+    assert not (tmp_path / "restart").exists()
+    done = run(*arguments, "--restart", "--json", "--out", str(tmp_path / "out"))
+    assert done.returncode == 0, done.stdout.decode() + done.stderr.decode()
+    assert "restart of the module, as" in done.stderr.decode()
+    report = json.loads(done.stdout)
+    assert report["summary"]["pass"] == 4
+    assert "restart" in report["iut"]["items"]
+    assert "assist" not in report["iut"]["items"]
+    assert (tmp_path / "out" / "conformance.log").read_text().count(" .. restart from outside") == 4
+
+
+@pytest.mark.parametrize(
+    ("command", "reason"),
+    [
+        ("false", "RestartFailed: 'false' ended with status 1"),
+        ("sh -c 'echo no power >&2; exit 3'", "ended with status 3: no power"),
+        ("/no/such/program", "RestartFailed: '/no/such/program' cannot be run: No such file or directory"),
+    ],
+)
+def test_a_means_that_does_not_work_is_the_bench_failing(tmp_path: Path, command: str, reason: str) -> None:
+    link, form = restartable(tmp_path, command)
+    done = run("check", "--link", link, "--ics", str(form), "--restart", "--only", "LSE.restart", "--json")
+    assert done.returncode == 4, done.stderr.decode()
+    (case,) = json.loads(done.stdout)["cases"]
+    assert case["verdict"] == "error"
+    assert reason in case["reason"]
+    assert "--restart" in case["replay"]
+    assert f"--ics {form}" in case["replay"]
+
+
+def test_a_means_that_does_nothing_fails_the_case(tmp_path: Path) -> None:
+    link, form = restartable(tmp_path, "true")
+    done = run("check", "--link", link, "--ics", str(form), "--restart", "--only", "LSE.restart", "--json")
+    assert done.returncode == 1, done.stderr.decode()
+    (case,) = json.loads(done.stdout)["cases"]
+    assert "STA-08: no started event within" in case["reason"]
+
+
+@pytest.mark.parametrize(
+    ("text", "message"),
+    [
+        (None, "--restart needs --ics with a table testing.restart"),
+        ("[times]\nstop_ms = 50", "names no means of restarting that the bench can use over this link"),
+        (
+            '[testing.restart]\noperator = "Pull the plug."',
+            "names no means of restarting that the bench can use",
+        ),
+        (
+            '[testing.restart]\ncommand = "true"',
+            "names no means of restarting that the bench can use",
+        ),  # virtual time
+    ],
+)
+def test_restart_without_a_means_is_wrong_use(tmp_path: Path, text: str | None, message: str) -> None:
+    form = tmp_path / "module.toml"
+    form.write_text(text or "")
+    done = invoke("check", "--restart", *(("--ics", str(form)) if text else ()), "--only", "VER")
+    assert done.exit_code == 2, done.stderr
+    assert message in words(done.stderr)

@@ -22,6 +22,7 @@ from protobench.links import (
     InUse,
     Limits,
     LinkError,
+    NoControlLine,
     NoPermission,
     NoSuchDevice,
     NotReachable,
@@ -433,3 +434,42 @@ def test_errors_survive_being_pickled():
     for error in (BadAddress("t", "p", "r"), NotReachable("a", "f", "v"), PeerClosed("a", "f", "v")):
         copy = pickle.loads(pickle.dumps(error))
         assert (type(copy), str(copy)) == (type(error), str(error))
+
+
+@pytest.mark.parametrize("line", ["dtr", "rts"])
+def test_a_control_line_is_turned_over_and_back(line, monkeypatch):
+    """pyserial's loop:// joins RTS to CTS and DTR to DSR, which shows what the line was."""
+    seen = []
+    with open_link("serial:loop://") as link:
+        port = link._port
+        before = getattr(port, line)
+
+        def sleep(seconds):
+            seen.append((seconds, port.cts if line == "rts" else port.dsr, getattr(port, line)))
+
+        monkeypatch.setattr("protobench.links.serial_port.time.sleep", sleep)
+        link.pulse(line, 250)
+        monkeypatch.undo()
+        assert seen == [(0.25, not before, not before)]
+        assert getattr(port, line) == before
+
+
+def test_a_pty_has_no_control_lines():
+    ours, theirs = os.openpty()
+    try:
+        with (
+            open_link(f"serial:{os.ttyname(theirs)}") as link,
+            pytest.raises(NoControlLine, match="use a device"),
+        ):
+            link.pulse("dtr", 1)
+    finally:
+        os.close(ours)
+        os.close(theirs)
+
+
+def test_other_links_have_no_control_lines():
+    with (
+        open_link("run:cat") as link,
+        pytest.raises(NoControlLine, match="run:cat: pulse rts: this link has no"),
+    ):
+        link.pulse("rts", 1)

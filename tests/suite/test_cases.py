@@ -9,7 +9,7 @@ from protobench.suite.case import CaseInfo, case
 from protobench.suite.run import list_cases
 from protobench.suite.selection import select
 
-LINK_ITEMS = {"stream", "gaps", "virtual", "travel"}
+LINK_ITEMS = {"stream", "gaps", "virtual", "travel", "restart"}
 CASES = list_cases()
 
 

@@ -429,6 +429,11 @@ def needing(needs: str, level: str = "required") -> CaseInfo:
         ("one-way-slide", "{all}", "bonds", "needs bonds (ics.toml: module.faces, motions)"),
         ("one-way-slide", "{all}", "ballistic", "needs ballistic (ics.toml: motion.*.no_return_ms)"),
         ("one-way-slide", "[module]\nfaces = 0", "bonds", "needs bonds (ics.toml: module.faces)"),
+        ("smallest", "{all}", "restart", "needs restart (ics.toml: capabilities)"),
+        ("smallest", '[testing.restart]\nline = "dtr"', "restart",
+         "needs restart (ics.toml: testing.restart is used with --restart only)"),
+        ("smallest", '[testing.restart]\noperator = "Pull the plug."', "restart",
+         "needs restart (ics.toml: testing.restart names an operator, whom the bench does not ask)"),
         (None, "{all}", "gaps and stream", "needs gaps; needs stream (gaps is a matter of the link; stream is a"),
     ],
 )  # fmt: skip
