@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
+from typing import NamedTuple
 
 from markupsafe import Markup
 
@@ -17,13 +18,21 @@ from protobench.wire import load_codec
 
 FRAMES_ALL = 1200  # of all failures together, so that the page stays small when everything fails
 FRAMES_MOST, FRAMES_LEAST = 40, 6
-REASON_MAX = 1200
+CROWD = 40  # more failures than that get less room each
+REPLAY_MAX = 1200
 DETAIL_MAX = 6000
-WORDS_MAX = 400
-HEX_MAX = 256  # bytes
 ITEMS_A_PIECE = 18  # of a chart, so that a piece fits on a page of paper
 OPEN_MOST = 6  # with more failures than that the frames are folded on the screen
 ORDER = {word: place for place, word in enumerate(("fail", "error", "known_deviation", "inconc"))}
+
+
+class Room(NamedTuple):
+    """How much of one failure is shown: frames, characters of a frame's words, its bytes, characters of the reason."""
+
+    frames: int
+    words: int
+    size: int
+    reason: int
 
 
 @dataclass(frozen=True, slots=True)
@@ -65,35 +74,41 @@ def failures(record: RunRecord, contract: Contract, names: Mapping[int, str]) ->
         return []
     address = record.iut.get("address")
     builder = Builder(load_codec(contract), address if isinstance(address, int) else 0, names)
-    last = max(FRAMES_LEAST, min(FRAMES_MOST, FRAMES_ALL // len(cases)))
+    room = _room(len(cases))
     return [
-        _failure(case, f"chart-{number}", last, contract, builder, is_open=len(cases) <= OPEN_MOST)
+        _failure(case, f"chart-{number}", room, contract, builder, is_open=len(cases) <= OPEN_MOST)
         for number, case in enumerate(cases)
     ]
 
 
+def _room(count: int) -> Room:
+    if count <= CROWD:
+        return Room(min(FRAMES_MOST, FRAMES_ALL // count), 400, 256, 1200)
+    return Room(max(FRAMES_LEAST, FRAMES_ALL // count), 160, 80, 300)
+
+
 def _failure(
-    case: CaseRecord, ident: str, last: int, contract: Contract, builder: Builder, *, is_open: bool
+    case: CaseRecord, ident: str, room: Room, contract: Contract, builder: Builder, *, is_open: bool
 ) -> Failure:
     pieces = []
     if case.exchange:
         first_line = case.reason.partition("\n")[0]
-        drawn = builder.chart(case.exchange, last, case.verdict.replace("_", " "), first_line)
+        drawn = builder.chart(case.exchange, room.frames, case.verdict.replace("_", " "), first_line)
         for number, piece in enumerate(parts(drawn, ITEMS_A_PIECE), 1):
             title = f"Sequence chart of {case.id}, part {number}: {cut(first_line, 200)}"
             pieces.append(svg(piece, f"{ident}-{number}", title))
     return Failure(
         case=case,
         anchor=anchor(case),
-        reason=cut_block(case.reason, REASON_MAX),
+        reason=cut_block(case.reason, room.reason),
         clauses=tuple(_clauses(case, contract)),
         chart=Markup("".join(pieces)),  # noqa: S704 - made by chart.svg, which escapes every text
-        frames=tuple(_row(exchange) for exchange in case.exchange[-last:]),
-        detail="" if case.exchange else cut_block(case.detail, DETAIL_MAX),
-        left_out=max(0, len(case.exchange) - last),
+        frames=tuple(_row(exchange, room) for exchange in case.exchange[-room.frames :]),
+        detail="" if case.exchange else cut_block(case.detail, DETAIL_MAX * room.frames // FRAMES_MOST),
+        left_out=max(0, len(case.exchange) - room.frames),
         is_open=is_open,
-        replay=cut(case.replay, REASON_MAX),
-        script=cut(str(getattr(case, "script", "") or ""), REASON_MAX),
+        replay=cut(case.replay, REPLAY_MAX),
+        script=cut(str(getattr(case, "script", "") or ""), REPLAY_MAX),
     )
 
 
@@ -109,9 +124,9 @@ def _clauses(case: CaseRecord, contract: Contract) -> Iterator[tuple[str, str, b
         )
 
 
-def _row(exchange: Exchange) -> FrameRow:
+def _row(exchange: Exchange, room: Room) -> FrameRow:
     data = exchange.data
-    shown = data[:HEX_MAX].hex(" ") + (f" ... {len(data)} bytes" if len(data) > HEX_MAX else "")
+    shown = data[: room.size].hex(" ") + (f" ... {len(data)} bytes" if len(data) > room.size else "")
     return FrameRow(
-        f"{exchange.time_ns / 1e6:.3f}", exchange.direction == "->", cut(exchange.words, WORDS_MAX), shown
+        f"{exchange.time_ns / 1e6:.3f}", exchange.direction == "->", cut(exchange.words, room.words), shown
     )

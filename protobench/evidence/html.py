@@ -107,7 +107,8 @@ def outcome_of(record: RunRecord) -> tuple[str, str]:
     stale = [entry for entry in record.deviations or () if entry.stale]
     if record.count("fail") or stale:
         return "fail", "The module does not keep the contract where the cases named below looked."
-    if record.count("error") or not record.count("pass") + record.count("inconc"):
+    judged = sum(record.count(word) for word in ("pass", "inconc", "known_deviation"))
+    if record.count("error") or not judged:
         return "error", "The bench itself failed, or nothing was judged. This says nothing about the module."
     if record.count("inconc"):
         return "inconc", "Nothing failed, and not everything could be shown."
