@@ -73,10 +73,13 @@ def check(
 ) -> None:
     """Judge a module by the conformance cases.
 
-    Exit status: 0 nothing failed and all that applies was judged; 1 something failed that is no
-    known deviation, or the list of them is wrong; 2 wrong use; 3 nothing failed
-    but something was inconclusive; 4 the bench itself failed or nothing ran; 130 interrupted, with a report of the
-    cases judged before.
+    Exit status:
+    0  nothing failed and all that applies was judged
+    1  something failed, or the statement or the list of deviations is wrong
+    2  wrong use; nothing that can move a module was sent
+    3  nothing failed but something was inconclusive
+    4  the bench itself failed or nothing ran
+    130  interrupted; the report holds the cases judged before
 
     Example: protobench check --link run:./my-module --out report
     """

@@ -24,7 +24,8 @@ def test_defaults_pass_and_leave_a_report(tmp_path: Path) -> None:
     done = run("check", "--out", str(tmp_path / "new" / "folder"))
     assert done.returncode == 0, done.stderr.decode()
     out = tmp_path / "new" / "folder"
-    assert sorted(path.name for path in out.iterdir()) == ["conformance.log", "junit.xml", "report.json"]
+    written = ["conformance.log", "junit.xml", "report.html", "report.json"]
+    assert sorted(path.name for path in out.iterdir()) == written
     report = json.loads((out / "report.json").read_text())
     assert list(report) == REPORT_KEYS
     assert list(report["summary"]) == SUMMARY_KEYS
