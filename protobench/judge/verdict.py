@@ -52,4 +52,12 @@ class Inconclusive(CaseVerdict):
 
 
 class NotApplicable(Exception):  # noqa: N818 - an outcome of selection, not an error
-    """The conformance statement does not select this case; the message says by which item."""
+    """The module, as it describes itself or as it is, gives this case nothing to judge; the message says why.
+
+    ``item``: the item of the conformance statement from which that follows, such as ``sizes.queue``; None where it
+    follows from none.
+    """
+
+    def __init__(self, reason: str, *, item: str | None = None) -> None:
+        super().__init__(reason)
+        self.item = item

@@ -118,7 +118,10 @@ class Link(ABC):
 
     ``name``: the address as text. ``loopback``: the far end is on this machine and is no device (memory, a
     child process, a loopback network address, a local socket file); what is not may be hardware that moves.
+    ``has_lines``: this kind of link has control lines, for ``pulse``; a device may lack them all the same.
     """
+
+    has_lines = False
 
     def __init__(
         self, name: str, framing: Framing, clock: Clock, *, loopback: bool, limits: Limits = DEFAULT_LIMITS

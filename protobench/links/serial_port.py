@@ -35,6 +35,8 @@ class SerialLink(DescriptorLink):
     A send is stamped when the system has taken the last byte; ``settle`` waits until it is on the line.
     """
 
+    has_lines = True
+
     def __init__(
         self,
         name: str,
@@ -97,6 +99,8 @@ class SerialUrlLink(RealTimeLink):
     pyserial does the reading and writing; arrivals are looked for every half millisecond. While a send waits,
     nothing is read.
     """
+
+    has_lines = True
 
     def __init__(
         self,

@@ -46,7 +46,7 @@ def outside_restart(statement: Statement | None, link: Link) -> OutsideRestart |
     An operator is asked for nothing, and what happens by the wall clock has no place in virtual time.
     """
     means = statement.testing.restart if statement is not None and statement.testing is not None else None
-    if means is None or means.operator is not None or link.virtual:
+    if means is None or means.operator is not None or link.virtual or (means.line and not link.has_lines):
         return None
     return OutsideRestart(means, link)
 

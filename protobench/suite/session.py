@@ -27,7 +27,7 @@ from protobench.suite.options import RunOptions
 from protobench.suite.port import Log
 from protobench.suite.restart import NoRestart, OutsideRestart, outside_restart
 from protobench.suite.statement_review import compare, review
-from protobench.suite.statement_select import why_not
+from protobench.suite.statement_select import why_not, with_item
 from protobench.suite.targets import embedded_link
 from protobench.wire import Codec, load_codec
 
@@ -224,7 +224,7 @@ class Session:
         except NotApplicable as why:
             self._attempt(self.bench.end, found, "postamble: ")
             if not found:
-                return Judged(NOT_APPLICABLE, str(why))
+                return Judged(NOT_APPLICABLE, with_item(why, self.options.statement))
         except LinkError as error:
             found.append(Finding(Verdict.FAIL, f"LOD-02: the link to the module ended: {error}", "LOD-02"))
             judged = Judged(Verdict.FAIL.word, found[0].reason, self._detail(), self._keep_exchange(None))

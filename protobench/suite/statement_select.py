@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Collection, Mapping
 
 from protobench.contract import Contract, parse_condition
+from protobench.judge import NotApplicable
 from protobench.suite.case import CaseInfo
 from protobench.suite.statement import Statement
 
@@ -35,6 +36,13 @@ def why_not(
     names = [name for name in condition.wanted if name not in items]
     names += [name for name in condition.unwanted if name in items]
     return f"{missing} ({'; '.join(dict.fromkeys(_source(name, statement, contract) for name in names))})"
+
+
+def with_item(why: NotApplicable, statement: Statement | None) -> str:
+    """Why a case found nothing to judge, with the item of the statement that says so, where one does."""
+    if statement is None or why.item is None or not _stated(why.item, statement):
+        return str(why)
+    return f"{why} ({statement.file}: {why.item})"
 
 
 def _denied(info: CaseInfo, statement: Statement) -> str | None:

@@ -439,7 +439,7 @@ def test_outcomes_full(bench: Bench) -> None:
     a.make_ready(30_000)
     places = bench.facts.description["outcomes"]
     if places > MOST_OUTCOMES:
-        raise NotApplicable(f"{places} outcomes would take too long to fill")
+        raise NotApplicable(f"{places} outcomes would take too long to fill", item="sizes.outcomes")
     outcomes = [a.outcome(a.move()) for _ in range(places)]
     for _ in range(2):
         a.refused("outcomes-full", "move", **a.move_fields(), clause="ACK-13")

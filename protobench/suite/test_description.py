@@ -130,7 +130,7 @@ def test_unsupported(bench: Bench) -> None:
             a.refused("unsupported", kind.name, clause="DSC-04", **fields[kind.name])
             tried += 1
     if not tried:
-        raise NotApplicable("the module declares every capability")
+        raise NotApplicable("the module declares every capability", item="capabilities")
 
 
 @case(

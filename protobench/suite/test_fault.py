@@ -461,7 +461,7 @@ def test_overflow(bench: Bench) -> None:
     a.take_lease(30_000)
     places = bench.facts.description["faults"]
     if places > MOST_PLACES:
-        raise NotApplicable(f"{places} places would take too long to fill")
+        raise NotApplicable(f"{places} places would take too long to fill", item="sizes.faults")
     code = _code(bench, "over-current")
     for _ in range(places):
         a.assist("raise", code=code)
@@ -502,7 +502,7 @@ def test_overflow_standing(bench: Bench) -> None:
     a.take_lease(30_000)
     places = bench.facts.description["faults"]
     if places > MOST_PLACES:
-        raise NotApplicable(f"{places} places would take too long to fill")
+        raise NotApplicable(f"{places} places would take too long to fill", item="sizes.faults")
     code, other = _code(bench, "over-current"), _code(bench, "position-lost")
     for _ in range(places):
         a.assist("raise", code=code)
@@ -528,7 +528,7 @@ def test_overflow_latches(bench: Bench) -> None:
     a.restart()
     places = bench.facts.description["faults"]
     if places > MOST_PLACES:
-        raise NotApplicable(f"{places} places would take too long to fill")
+        raise NotApplicable(f"{places} places would take too long to fill", item="sizes.faults")
     notice, latching = _code(bench, "shell-warm"), _code(bench, "over-current")
     for _ in range(places):
         a.assist("raise", code=notice)

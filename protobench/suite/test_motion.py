@@ -61,7 +61,9 @@ def test_magnitudes(bench: Bench) -> None:
     ends = (-33, -128, -129, -32_768, -32_769, 128, 255, 256, 65_535, 65_536)
     magnitudes = [end for end in ends if facts.magnitude_min <= end <= facts.magnitude_max]
     if not magnitudes:
-        raise NotApplicable(f"the range of {facts.name} reaches the end of no width")
+        raise NotApplicable(
+            f"the range of {facts.name} reaches the end of no width", item="motion.*.magnitude_max"
+        )
     for magnitude in magnitudes:
         outcome = a.ended(a.move(facts.name, magnitude=magnitude), "done", "none", "MOT-04")
         if abs(outcome["displacement"] - magnitude) > max(1, SHARE * abs(magnitude)):
@@ -118,7 +120,7 @@ def test_undeclared(bench: Bench) -> None:
     for name in absent:
         a.refused("unsupported", "move", motion=name, magnitude=1, key=2, clause="MOT-02")
     if not absent:
-        raise NotApplicable("the module declares every motion")
+        raise NotApplicable("the module declares every motion", item="motions")
 
 
 @case(
@@ -242,7 +244,7 @@ def test_queue_full(bench: Bench) -> None:
     a.make_ready(30_000)
     room = bench.facts.description["queue"]
     if room + 1 > bench.facts.description["outcomes"]:
-        raise NotApplicable("the outcome table is full before the queue")
+        raise NotApplicable("the outcome table is full before the queue", item="sizes.queue")
     if bench.facts.has("assist"):
         a.hold("running")
     moves = [a.move(bench.facts.stoppable().name) for _ in range(room + 1)]
@@ -305,7 +307,7 @@ def test_predecessor(bench: Bench) -> None:
 def test_cancel_queued(bench: Bench) -> None:
     a = bench.a
     if bench.facts.description["queue"] < 2:
-        raise NotApplicable("the queue holds one motion only")
+        raise NotApplicable("the queue holds one motion only", item="sizes.queue")
     a.make_ready()
     moves = [a.move() for _ in range(3)]
     a.accepted("cancel", target=moves[1].number, clause="MOT-08")

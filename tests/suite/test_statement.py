@@ -18,6 +18,7 @@ from emulator.config import ModuleConfig
 from emulator.engine import ModuleEngine
 from emulator.storage import Storage
 from protobench.contract import load_contract
+from protobench.judge import NotApplicable
 from protobench.links import MemoryLink
 from protobench.suite.case import CaseInfo
 from protobench.suite.facts import Facts
@@ -29,10 +30,11 @@ from protobench.suite.statement import Statement, load_statement
 from protobench.suite.statement_form import write_form
 from protobench.suite.statement_items import Item, item_tables
 from protobench.suite.statement_review import Finding, compare, review
-from protobench.suite.statement_select import FOLLOWS_FROM, why_not
+from protobench.suite.statement_select import FOLLOWS_FROM, why_not, with_item
 
 CONTRACT = load_contract()
 SPEC = Path(__file__).parents[2] / "spec" / "1.0"
+SUITE = Path(__file__).parents[2] / "protobench" / "suite"
 TABLES = ("module", "sizes", "times")
 ITEMS = [(table, item) for table in TABLES for item in item_tables(CONTRACT)[table]]
 MOTION_ITEMS = item_tables(CONTRACT)["motion"]
@@ -455,6 +457,40 @@ def test_a_run_says_it_in_its_report(tmp_path: Path) -> None:
     record = run_suite(RunOptions(opener=opener, statement=statement, only="TEL or telemetry"))
     left_out = [case.reason for case in record.cases if case.verdict == "not_applicable"]
     assert set(left_out) == {f"needs telemetry ({statement.file}: capabilities)"}
+
+
+@pytest.mark.parametrize(
+    ("item", "form", "shown"),
+    [
+        ("sizes.queue", "[sizes]\nqueue = 1", True),
+        ("sizes.queue", "[sizes]\nfaults = 9", False),
+        ("motions", 'motions = ["hop"]', True),
+        ("motion.*.magnitude_max", "[motion.hop]\nmagnitude_max = 1", True),
+        (None, "[sizes]\nqueue = 1", False),
+    ],
+)
+def test_what_a_case_finds_missing_names_the_item_too(
+    tmp_path: Path, item: str | None, form: str, shown: bool
+) -> None:
+    statement = stated(tmp_path, form)
+    why = NotApplicable("too little", item=item)
+    assert with_item(why, statement) == "too little" + (f" ({statement.file}: {item})" if shown else "")
+    assert with_item(why, None) == "too little"
+
+
+def test_a_run_names_the_item_of_what_a_case_finds_missing(tmp_path: Path) -> None:
+    statement = stated(tmp_path, write_form(CONTRACT, *asked()))
+    (case,) = run_suite(RunOptions(statement=statement, only="DSC.unsupported")).cases
+    assert case.reason == f"the module declares every capability ({statement.file}: capabilities)"
+
+
+def test_the_items_that_cases_name_are_items() -> None:
+    known = {f"{table}.{item.name}" for table, item in ITEMS} | {"capabilities", "motions"}
+    known |= {f"motion.*.{item.name}" for item in MOTION_ITEMS}
+    source = "".join(path.read_text() for path in SUITE.glob("test_*.py"))
+    named = re.findall(r'NotApplicable\([^\n]*item="([^"]+)"', source)
+    assert named
+    assert set(named) <= known
 
 
 def test_every_item_of_the_contract_has_a_source() -> None:
