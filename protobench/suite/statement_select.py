@@ -33,9 +33,9 @@ def why_not(
         return missing
     if condition is None or missing is None:
         return _denied(info, statement)
-    names = [name for name in condition.wanted if name not in items]
-    names += [name for name in condition.unwanted if name in items]
-    return f"{missing} ({'; '.join(dict.fromkeys(_source(name, statement, contract) for name in names))})"
+    parts = [("needs", name) for name in condition.wanted if name not in items]
+    parts += [("only without", name) for name in condition.unwanted if name in items]
+    return "; ".join(f"{word} {name} ({_source(name, statement, contract)})" for word, name in parts)
 
 
 def with_item(why: NotApplicable, statement: Statement | None) -> str:
@@ -68,10 +68,10 @@ def _source(name: str, statement: Statement, contract: Contract) -> str:
     elif name in FOLLOWS_FROM:
         fields = [field for field in FOLLOWS_FROM[name] if _stated(field, statement)]
     else:
-        return f"{name} is a matter of the link"
+        return "a matter of the link"
     if fields:
         return f"{statement.file}: {', '.join(fields)}"
-    return f"by the module's description; {statement.file} does not say"
+    return f"by the module's description, {statement.file} does not say"
 
 
 def _stated(field: str, statement: Statement) -> bool:
