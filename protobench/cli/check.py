@@ -107,9 +107,7 @@ def check(
     console = Console(stderr=True)
     with ExitStack() as stack:
         record = judging.beside(judging.judge(options, stack, console), listed)
-    report = judging.write_report(
-        record, options, {"conformance statement": ics, "list of known deviations": deviations}
-    )
+    report = judging.write_report(record, options, {"list of known deviations": deviations})
     status = judging.exit_status(record)
     if status == INTERRUPTED:
         judging.say_interrupted(record, out, console)

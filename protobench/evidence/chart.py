@@ -9,11 +9,11 @@ from html import escape
 from protobench.evidence.sequence import MODULE, Chart, Condition, End, Message, Wait, order
 from protobench.evidence.text import cut, plain
 
-TIME_WIDTH = 104
+TIME_WIDTH = 92
 HEAD_HEIGHT = 58
-MARGIN = 96  # between an outer axis and the edge
+MARGIN = 84  # between an outer axis and the edge
 SPAN_LEAST = 176  # between two axes
-SPAN_ALL_LEAST = 400  # between the outer ones
+SPAN_ALL_LEAST = 340  # between the outer ones
 MESSAGE_HEIGHT = 46
 BARE_HEIGHT = 34  # of a message without a note
 CONDITION_HEIGHT = 38

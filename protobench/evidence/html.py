@@ -23,7 +23,11 @@ from protobench.judge import NOT_APPLICABLE, RunRecord
 TEMPLATES = Path(__file__).resolve().parent / "templates"
 ROWS_MAX = 200  # of a table made of values that this page knows nothing about
 VALUE_MAX = 300
-ROW_NAMES = {"items": "conditions that hold"}
+ROW_NAMES = {
+    "items": "conditions that hold",
+    "statement": "conformance statement",
+    "statement_sha256": "digest of the statement",
+}
 KNOWN = {"contract", "seed", "iut", "environment", "summary", "cases", "clauses", "stopped", "deviations"}
 WORDS = {
     "pass": "pass",
@@ -133,7 +137,7 @@ def identity_rows(
         ("seed", str(record.seed)),
         ("attended", "yes, someone stood by" if particulars.attended else "no"),
         ("processors", str(os.cpu_count() or "unknown")),
-        *((name.replace("_", " "), _value(value)) for name, value in environment.items()),
+        *((_row_name(name), _value(value)) for name, value in environment.items()),
     ]
     for purpose, path in particulars.files.items():
         run.append(
@@ -152,6 +156,10 @@ def identity_rows(
     ]
 
 
+def _row_name(name: str) -> str:
+    return cut(ROW_NAMES.get(name, name.replace("_", " ")), 80)
+
+
 def _module_rows(iut: Mapping[str, object], contract: Contract) -> list[tuple[str, str]]:
     bits = {
         "capabilities": {capability.number: capability.name for capability in contract.capabilities},
@@ -162,7 +170,7 @@ def _module_rows(iut: Mapping[str, object], contract: Contract) -> list[tuple[st
         shown = _value(value)
         if name in bits and isinstance(value, int):
             shown = ", ".join(word for bit, word in bits[name].items() if value >> bit & 1) or "none"
-        rows.append((ROW_NAMES.get(name, name.replace("_", " ")), shown))
+        rows.append((_row_name(name), shown))
     return rows
 
 

@@ -42,16 +42,12 @@ def exchange() -> list[Exchange]:
 
 
 def test_identity(tmp_path: Path) -> None:
-    statement = tmp_path / "my.toml"
-    statement.write_bytes(b"motions = []\n")
-    page = page_of(run(), attended=True, files={"conformance statement": statement})
-    facts = dict(
-        zip(
-            (item.text for item in parse(page).all("dt")),
-            (item.text for item in parse(page).all("dd")),
-            strict=True,
-        )
-    )
+    listed = tmp_path / "known.toml"
+    listed.write_bytes(b"deviation = []\n")
+    record = run()
+    record.environment |= {"statement": "my.toml", "statement_sha256": "ab" * 32}
+    page = page_of(record, attended=True, files={"list of known deviations": listed})
+    facts = dict(definitions(parse(page)))
     assert facts["seed"] == "42"
     assert facts["link"] == "memory:"
     assert facts["time basis"] == "virtual time"
@@ -60,16 +56,17 @@ def test_identity(tmp_path: Path) -> None:
     assert facts["nature"] == "emulated"
     assert facts["digest of its tables"] == contract_digest("1.0")
     assert (
-        facts["conformance statement"]
-        == f"my.toml, digest {hashlib.sha256(b'motions = []' + bytes([10])).hexdigest()}"
+        facts["list of known deviations"]
+        == f"known.toml, digest {hashlib.sha256(listed.read_bytes()).hexdigest()}"
     )
     assert re.fullmatch("[0-9a-f]{64}", facts["digest of its sources"])
+    assert (facts["conformance statement"], facts["digest of the statement"]) == ("my.toml", "ab" * 32)
 
 
 def test_bit_sets_are_told_by_name() -> None:
     record = run()
     record.iut |= {"capabilities": 0b101, "motions": 0}
-    facts = {pair[0]: pair[1] for pair in definitions(parse(page_of(record)))}
+    facts = dict(definitions(parse(page_of(record))))
     names = {capability.number: capability.name for capability in CONTRACT.capabilities}
     assert facts["capabilities"] == f"{names[0]}, {names[2]}"
     assert facts["motions"] == "none"
