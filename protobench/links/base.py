@@ -119,9 +119,11 @@ class Link(ABC):
     ``name``: the address as text. ``loopback``: the far end is on this machine and is no device (memory, a
     child process, a loopback network address, a local socket file); what is not may be hardware that moves.
     ``has_lines``: this kind of link has control lines, for ``pulse``; a device may lack them all the same.
+    ``byte_ns``: how long one byte takes on the line, where the line has a rate of its own; else 0.
     """
 
     has_lines = False
+    byte_ns = 0
 
     def __init__(
         self, name: str, framing: Framing, clock: Clock, *, loopback: bool, limits: Limits = DEFAULT_LIMITS

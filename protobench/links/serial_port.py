@@ -24,15 +24,16 @@ from protobench.links.errors import (
 from protobench.links.realtime import READ_BYTES, DescriptorLink, RealTimeLink
 
 DEFAULT_BAUD = 115_200
+BITS_PER_BYTE = 10  # start bit, eight data bits, stop bit
 _NAME_ONE = "name a serial device, such as /dev/ttyUSB0, or a pty"
 _URL_POLL_S = 0.0005  # pyserial gives its URL forms no common way to wait
-_SETTLE_POLL_S = 0.001
+_SETTLE_POLL_S = 0.0002
 
 
 class SerialLink(DescriptorLink):
     """A byte stream over a serial device or a pty: 8 data bits, no parity, one stop bit; locked for us alone.
 
-    A send is stamped when the system has taken the last byte; ``settle`` waits until it is on the line.
+    A send returns, and is stamped, when the system says that the last byte has left; what arrives meanwhile is kept.
     """
 
     has_lines = True
@@ -61,8 +62,15 @@ class SerialLink(DescriptorLink):
             raise from_os_error(asked, error) from error
         except ValueError as error:
             raise BadAddress(name, f"baud {baud}", f"the device refuses this rate ({error})") from error
+        self.byte_ns = BITS_PER_BYTE * 1_000_000_000 // baud
         fd = self._port.fileno()
         self._watch(fd, fd)
+
+    def send(self, *units: bytes) -> int:
+        super().send(*units)
+        if not self.settle(self.clock.now_ns() + int(self.limits.send_s * 1e9)):
+            raise self._stalled(f"{sum(map(len, units))} bytes")
+        return self.clock.now_ns()
 
     def settle(self, deadline_ns: int) -> bool:
         self._check_open()
@@ -70,7 +78,8 @@ class SerialLink(DescriptorLink):
             while self._port.out_waiting:
                 if self.clock.now_ns() >= deadline_ns:
                     return False
-                time.sleep(_SETTLE_POLL_S)
+                if not self._pull():
+                    time.sleep(_SETTLE_POLL_S)
         except OSError as error:
             raise self._end(error) from error
         return True

@@ -43,8 +43,8 @@ class Bench:
         self.contract = contract
         self.language = Language(contract, codec)
         self.port = Port(link, self.language, log)
-        if not link.virtual:
-            self.port.watch.spacing_slack_ns = REAL_SPACING_SLACK_NS
+        own_slack_ns = 0 if link.virtual else REAL_SPACING_SLACK_NS
+        self.port.watch.spacing_slack_ns = own_slack_ns + self.port.line_ns
         self.seed = seed
         self.address = 0
         self.facts = Facts()

@@ -14,6 +14,7 @@ from protobench.suite.language import Language, Reading
 from protobench.suite.watch import Watch
 from protobench.wire import Dropped, Frame
 
+BLOCK_SIZE_MAX = 256  # of a stuffed frame with its delimiter
 SILENCE_NS = 200_000_000  # a sender silent for longer begins with a delimiter
 REAL_TIME_U_MS = 4.0  # least uncertainty claimed for a time measured in real time
 Predicate = Callable[["Received"], bool]
@@ -113,10 +114,17 @@ class Port:
 
     @property
     def u_ms(self) -> float:
-        """Expanded uncertainty of an interval in ms: none in virtual time, else by how late own waits ended."""
-        if self.link.virtual:
-            return 0.0
-        return max(REAL_TIME_U_MS, 3 * self._lateness_ns / 1e6)
+        """Expanded uncertainty of an interval in ms: by how late own waits ended, none in virtual time.
+
+        On a line with a rate of its own a frame may have waited behind another.
+        """
+        own_ms = 0.0 if self.link.virtual else max(REAL_TIME_U_MS, 3 * self._lateness_ns / 1e6)
+        return own_ms + self.line_ns / 1e6
+
+    @property
+    def line_ns(self) -> int:
+        """How long the longest frame takes on the line."""
+        return BLOCK_SIZE_MAX * self.link.byte_ns
 
     @property
     def is_lossless(self) -> bool:

@@ -6,6 +6,7 @@ import random
 
 import pytest
 from judging import SEED, expect_sound, firmware, judge
+from slow_line import SlowLine
 from sound_configs import CONFIGS
 from sound_engines import ENGINES
 
@@ -36,6 +37,16 @@ def test_python_module_that_takes_other_freedoms(name: str) -> None:
         return MemoryLink(ENGINES[name](ModuleConfig(), Storage(), random.Random(SEED), load_contract()))
 
     expect_sound(judge(opener=opener))
+
+
+def test_behind_a_serial_line() -> None:
+    """At 115,200 baud, where a frame may wait behind another; the areas that judge times."""
+
+    def opener() -> SlowLine:
+        engine = ModuleEngine(ModuleConfig(), Storage(), random.Random(SEED), load_contract())
+        return SlowLine(engine, byte_us=87)
+
+    expect_sound(judge(opener=opener, only="ACK or HLT or MOT or FLT or TIM"))
 
 
 @pytest.mark.parametrize("build", ["build", "build-sanitized"])
