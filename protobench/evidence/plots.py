@@ -5,6 +5,7 @@ from __future__ import annotations
 import io
 import re
 import statistics
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -14,6 +15,7 @@ from protobench.evidence.text import cut
 from protobench.judge import RunRecord
 
 PICTURES_MAX = 16
+POINTS_MAX = 400  # of a picture
 VALUES_LEAST = 4  # fewer have no distribution to show
 TABLE_MAX = 200
 WIDTH_IN, HEIGHT_IN = 5.4, 2.3
@@ -115,10 +117,8 @@ def picture(timing: Timing, ident: str) -> str:
     with mpl.rc_context(rules):
         figure = Figure(figsize=(WIDTH_IN, HEIGHT_IN), layout="constrained")
         axes = figure.add_subplot()
-        values = sorted(timing.values)
-        heights = [(place + 1) / len(values) for place in range(len(values))]
+        values, heights = steps(timing.values)
         axes.step([values[0], *values], [0.0, *heights], where="post", color=SHAPE, linewidth=1.6)
-        axes.plot(values, heights, linestyle="none", marker="|", markersize=5, color=SHAPE)
         for limit in (timing.low, timing.high):
             if limit is not None:
                 axes.axvspan(
@@ -130,6 +130,21 @@ def picture(timing: Timing, ident: str) -> str:
         axes.set_ylabel("share of values")
         axes.spines[["top", "right"]].set_visible(False)
         return _element(figure_svg(figure), timing, ident)
+
+
+def steps(values: Sequence[float]) -> tuple[list[float], list[float]]:
+    """The empirical distribution: values in order, and the share of all that are no greater; thinned when many.
+
+    The least and the greatest value are always kept.
+    """
+    ordered = sorted(values)
+    count = len(ordered)
+    kept = (
+        range(count)
+        if count <= POINTS_MAX
+        else [place * (count - 1) // (POINTS_MAX - 1) for place in range(POINTS_MAX)]
+    )
+    return [ordered[place] for place in kept], [(place + 1) / count for place in kept]
 
 
 def figure_svg(figure: object) -> str:
