@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import io
+import math
 import re
 import statistics
 from collections.abc import Sequence
@@ -46,6 +47,7 @@ class Timing:
     factor: float
     values: list[float] = field(default_factory=list)
     cases: list[str] = field(default_factory=list)
+    decisions: list[str] = field(default_factory=list)
     picture: Markup | str = ""
 
     @property
@@ -86,14 +88,14 @@ def timings(record: RunRecord) -> list[Timing]:
     """Everything that was measured, nearest to its limit first; the first of them with pictures."""
     found: dict[tuple[object, ...], Timing] = {}
     for case in record.cases:
-        for measured in getattr(case, "measurements", ()):
-            key = (measured.name, measured.clause, measured.unit, measured.low, measured.high)
-            timing = found.get(key)
-            if timing is None:
-                timing = found[key] = Timing(*key, measured.expanded, measured.factor)
-            timing.expanded = max(timing.expanded, measured.expanded)
-            timing.values += measured.values
+        for one in case.measurements:
+            first = Timing(one.name, one.clause, one.unit, one.low, one.high, one.U, one.k)
+            timing = found.setdefault((one.name, one.clause, one.unit, one.low, one.high), first)
+            timing.expanded = max(timing.expanded, one.U)
+            timing.values += [value for value in one.values if math.isfinite(value)]
             timing.cases.append(case.id)
+            if one.decision and one.decision not in timing.decisions:
+                timing.decisions.append(one.decision)
     measured_ones = sorted(
         (timing for timing in found.values() if timing.values), key=lambda one: -one.nearness
     )

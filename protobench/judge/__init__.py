@@ -1,6 +1,6 @@
 """Verdicts and what a run leaves behind."""
 
-from protobench.judge.record import CaseRecord, DeviationRecord, Exchange, RunRecord
+from protobench.judge.record import CaseRecord, DeviationRecord, Exchange, Measurement, RunRecord
 from protobench.judge.verdict import (
     KNOWN_DEVIATION,
     NOT_APPLICABLE,
@@ -20,6 +20,7 @@ __all__ = [
     "Exchange",
     "Failed",
     "Inconclusive",
+    "Measurement",
     "NotApplicable",
     "RunRecord",
     "Verdict",

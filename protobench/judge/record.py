@@ -20,6 +20,25 @@ class Exchange:
     words: str
 
 
+@dataclass(frozen=True, slots=True)
+class Measurement:
+    """What a case measured of one quantity: ``values`` in ``unit``, with the limits that its clause sets.
+
+    ``low``, ``high``: None where there is no such limit. ``U``: expanded uncertainty of one value, in ``unit``, with
+    coverage factor ``k``. ``decision``: what that says, in words.
+    """
+
+    name: str
+    clause: str
+    unit: str
+    values: Sequence[float]
+    low: float | None = None
+    high: float | None = None
+    U: float = 0.0
+    k: float = 2.0
+    decision: str = ""
+
+
 @dataclass(slots=True)
 class CaseRecord:
     """One case as judged.
@@ -28,7 +47,7 @@ class CaseRecord:
     ``detail`` holds readable lines on what was sent, expected and received; ``replay`` is the command
     that runs this case again the same way; ``broken`` holds the clauses that its failures name, in the order they
     were seen, an empty string for one that names none; ``exchange`` is what passed up to the verdict, for a case
-    that did not pass.
+    that did not pass; ``measurements`` what was measured, whatever the verdict.
     """
 
     id: str
@@ -43,6 +62,7 @@ class CaseRecord:
     replay: str = ""
     broken: tuple[str, ...] = ()
     exchange: Sequence[Exchange] = ()
+    measurements: Sequence[Measurement] = ()
 
 
 @dataclass(frozen=True, slots=True)
