@@ -37,6 +37,7 @@ def _latched(bench: Bench, tester: Tester) -> list[int]:
 )
 def test_told(bench: Bench) -> None:
     a = bench.a
+    a.restart()  # counts are since the start
     a.make_ready()
     clock = a.status()["clock"]
     for name in ("winding-hot", "over-current", "sensor-implausible"):
@@ -363,6 +364,7 @@ def test_clear_refused(bench: Bench) -> None:
 )
 def test_edges(bench: Bench) -> None:
     a = bench.a
+    a.restart()  # counts are since the start
     a.take_lease()
     code = _code(bench, "over-current")
     a.assist("raise", code=code)

@@ -15,6 +15,9 @@ from emulator.engine import ModuleEngine
 from emulator.storage import Storage
 from protobench.contract import load_contract
 from protobench.links import MemoryLink
+from protobench.suite.options import RunOptions
+from protobench.suite.run import list_cases
+from protobench.suite.session import Session
 
 
 def test_embedded_module() -> None:
@@ -37,6 +40,19 @@ def test_python_module_that_takes_other_freedoms(name: str) -> None:
         return MemoryLink(ENGINES[name](ModuleConfig(), Storage(), random.Random(SEED), load_contract()))
 
     expect_sound(judge(opener=opener))
+
+
+@pytest.mark.parametrize("seed", [1, 2])
+def test_the_order_of_the_cases_does_not_matter(seed: int) -> None:
+    """One module judged twice without a restart between, in two other orders."""
+    engine = ModuleEngine(ModuleConfig(), Storage(), random.Random(seed), load_contract())
+    cases = list_cases()
+    with Session(RunOptions(opener=lambda: MemoryLink(engine), seed=seed)) as session:
+        for round_ in range(2):
+            random.Random(10 * seed + round_).shuffle(cases)
+            records = [session.judge(info) for info in cases]
+            bad = [one for one in records if one.verdict not in ("pass", "not_applicable")]
+            assert not bad, f"seed {seed}, round {round_}: {bad[0].id} {bad[0].verdict}: {bad[0].reason}"
 
 
 def test_behind_a_serial_line() -> None:
