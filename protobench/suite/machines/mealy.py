@@ -66,6 +66,10 @@ class Mealy:
             at = self.step(at, symbol)[1]
         return at
 
+    def starting(self, state: str) -> Mealy:
+        """The same machine with another initial state."""
+        return Mealy(self.inputs, state, self.table)
+
     def cover(self) -> dict[str, Word]:
         """For each state that can be reached, nearest first, a shortest word that leads to it."""
         access: dict[str, Word] = {self.initial: ()}
