@@ -54,6 +54,13 @@ class Judged(NamedTuple):
     exchange: Sequence[Exchange] = ()
 
 
+class Passed(NamedTuple):
+    """The last of what passed in a case, of so many frames in all."""
+
+    exchange: Sequence[Exchange]
+    total: int
+
+
 class NeedsAttendance(Exception):  # noqa: N818 - says what is missing
     """The module may move matter, and nobody said that someone stands by. The message says why and how."""
 
@@ -209,14 +216,15 @@ class Session:
         missing = why_not(info, self.bench.facts.items, self.options.statement, self.contract)
         if missing:
             return Judged(NOT_APPLICABLE, missing)
+        passed: Passed | None = None
         try:
             self._attempt(lambda: self.bench.begin(info.id), found)
             if not found:
                 self._attempt(lambda: info.function(self.bench), found)
-            shown = self.bench.port.events_seen if found else None
+            passed = self._passed() if found else None  # before the postamble adds to it
             self._attempt(self.bench.end, found, "postamble: ")
-            if not found:
-                shown = self.bench.port.violated_at
+            if not found and self.bench.port.watch.violations:
+                passed = self._passed(self.bench.port.violated_at)
             found += [
                 Finding(Verdict.FAIL, f"{violation.clause}: {violation.reason}", violation.clause)
                 for violation in self.bench.port.watch.violations
@@ -227,14 +235,15 @@ class Session:
                 return Judged(NOT_APPLICABLE, with_item(why, self.options.statement))
         except LinkError as error:
             found.append(Finding(Verdict.FAIL, f"LOD-02: the link to the module ended: {error}", "LOD-02"))
-            judged = Judged(Verdict.FAIL.word, found[0].reason, self._detail(), self._keep_exchange(None))
+            passed = self._passed()
             self._reopen()
-            return judged
+            return Judged(Verdict.FAIL.word, found[0].reason, _detail(passed), passed.exchange)
         if not found:
             return Judged(Verdict.PASS.word)
         worst = max(finding.verdict for finding in found)
         reasons = [finding.reason for finding in found if finding.verdict is worst]
-        return Judged(worst.word, reasons[0], self._detail(reasons[1:], shown), self._keep_exchange(shown))
+        passed = passed or self._passed()
+        return Judged(worst.word, reasons[0], _detail(passed, reasons[1:]), passed.exchange)
 
     def _attempt(self, step: Any, found: list[Finding], prefix: str = "") -> None:
         try:
@@ -247,21 +256,16 @@ class Session:
         except Exception as error:  # noqa: BLE001 - a defect of the bench or of a case is a verdict of its own
             found.append(Finding(Verdict.ERROR, f"{prefix}{type(error).__name__}: {error}"))
 
-    def _detail(self, more: list[str] | None = None, shown: int | None = None) -> str:
-        """The exchange up to the failure; what the postamble did after it is in the conformance log."""
-        port = self.bench.port
-        lines = [f"also: {reason}" for reason in more or []]
-        total = port.events_seen if shown is None else shown
-        if total > DETAIL_FRAMES:
-            lines.append(f"... {total - DETAIL_FRAMES} earlier frames are in the conformance log")
-        return "\n".join(lines + [_line(exchange) for exchange in port.exchange(shown, DETAIL_FRAMES)])
+    def _passed(self, until: int | None = None) -> Passed:
+        """What passed in the case, up to its event number ``until``.
 
-    def _keep_exchange(self, shown: int | None) -> list[Exchange]:
-        """The exchange for charts and replays: whole, until so many of the run's are kept that only ends are."""
+        It is kept whole for charts and replays, until so many of the run's are kept that only ends are.
+        """
         port = self.bench.port
-        kept = port.exchange(shown, None if self._kept < EXCHANGE_RUN_MAX else EXCHANGE_LEAST)
+        most = None if self._kept < EXCHANGE_RUN_MAX else EXCHANGE_LEAST
+        kept = port.exchange(until, most) or port.exchange(None, most)
         self._kept += len(kept)
-        return kept
+        return Passed(kept, port.events_seen if until is None else until)
 
     def _reopen(self) -> None:
         """The far end went away: the next case gets a new link. What cannot be opened again ends the run."""
@@ -280,6 +284,14 @@ class Session:
         if self.options.attended:
             command.append("--attended")
         return shlex.join(command)
+
+
+def _detail(passed: Passed, more: Sequence[str] = ()) -> str:
+    """The exchange up to the failure; what the postamble did after it is in the conformance log."""
+    lines = [f"also: {reason}" for reason in more]
+    if passed.total > DETAIL_FRAMES:
+        lines.append(f"... {passed.total - DETAIL_FRAMES} earlier frames are in the conformance log")
+    return "\n".join(lines + [_line(exchange) for exchange in passed.exchange[-DETAIL_FRAMES:]])
 
 
 def _line(exchange: Exchange) -> str:
