@@ -272,7 +272,7 @@ def note_of(explanation: Explanation) -> str:
     if explanation.dropped is not None:
         return f"dropped: {explanation.dropped.reason}"
     if explanation.problems:
-        return f"body breaks the contract: {explanation.problems[0]}"
+        return f"bad body: {explanation.problems[0]}"
     wanted = TOLD.get(explanation.kind)
     lines = [line for line in explanation.body if line.name and (wanted is None or line.name in wanted)]
     if wanted is None:

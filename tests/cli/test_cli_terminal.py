@@ -70,6 +70,7 @@ def test_ctrl_c_ends_with_130_and_a_halt(tmp_path: Path) -> None:
     last = codec.frames.unpack(units[-1]) if isinstance(units[-1], bytes) else units[-1]
     assert isinstance(last, Frame)
     assert codec.kinds_by_code[last.kind].name == "halt"
+    assert "The run was stopped (interrupted)." in (out_folder / "report.html").read_text()
     report = json.loads((out_folder / "report.json").read_text())
     assert report["stopped"] == "interrupted"
     judged = [case["id"] for case in report["cases"]]

@@ -206,7 +206,7 @@ def test_a_body_that_breaks_the_contract_is_said_to() -> None:
     )
     ((_, _, label, note),) = arrows(BUILDER.chart([received(0, broken)], 40))
     assert label == "receipt #1"
-    assert note.startswith("body breaks the contract: ")
+    assert note.startswith("bad body: ")
 
 
 @pytest.mark.parametrize(
