@@ -38,6 +38,14 @@ class NoLog:
         pass
 
 
+class Beside(Protocol):
+    """Runs beside the module and is told every sound frame, both ways; see :class:`protobench.suite.model.Model`."""
+
+    def sent(self, data: bytes, time_ns: int) -> None: ...
+
+    def received(self, data: bytes, time_ns: int) -> None: ...
+
+
 class Event(NamedTuple):
     """What passed, kept raw: words are made only where somebody reads them. ``time_ns`` is the link's clock."""
 
@@ -100,6 +108,7 @@ class Port:
         self.events_seen = 0
         self.violated_at: int | None = None
         self.watch = Watch(language.contract)
+        self.beside: Beside | None = None
         self._decoder = language.stream_decoder()
         self._last_sent_ns: int | None = None
         self._begun_ns = 0  # when the frame that is half here began to arrive
@@ -158,6 +167,7 @@ class Port:
         for frame in frames:
             reading = self.language.read(frame)
             self.watch.sent(frame, reading, time_ns)
+            self._tell_sent(frame, time_ns)
             self._record("->", time_ns, frame, reading)
         return time_ns
 
@@ -173,7 +183,12 @@ class Port:
         self._record("->", time_ns, data, "raw bytes")
         for frame in self.language.split(data):
             self.watch.sent(frame, self.language.read(frame), time_ns)
+            self._tell_sent(frame, time_ns)
         return time_ns
+
+    def _tell_sent(self, frame: bytes, time_ns: int) -> None:
+        if self.beside is not None:
+            self.beside.sent(frame, time_ns)
 
     def _lead(self) -> bytes:
         last = self._last_sent_ns
@@ -265,6 +280,8 @@ class Port:
         reading = self.language.read(unit)
         self._record("<-", time_ns, unit, reading)
         self.watch.received(unit, reading, begun_ns)
+        if self.beside is not None:
+            self.beside.received(unit, begun_ns)
         if reading.fields is not None:
             self.inbox.append(Received(begun_ns, unit, frame, reading.kind, reading.fields))
 
