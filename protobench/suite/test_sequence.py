@@ -7,6 +7,7 @@ from typing import Any
 from protobench.judge import Failed
 from protobench.suite.bench import CONTROLLER_A, Bench
 from protobench.suite.case import case
+from protobench.suite.machines.subjects import expect_follows
 from protobench.suite.port import Received, Sent
 from protobench.suite.tester import MODULUS, Tester, answer_words
 from protobench.suite.tools import expect_silent_refusals
@@ -509,3 +510,19 @@ def test_version_apart(bench: Bench) -> None:
     foreign = a.send("renew-lease", duration=9000, version=2)
     a.expect_refused(foreign, "unsupported-version", "VER-01")
     a.expect_accepted(a.send_frame(a.frame("renew-lease", duration=9000, number=foreign.number)), "SEQ-02")
+
+
+DERIVED_INPUTS = (
+    "next", "skip", "refused", "copy", "other-body", "other-kind", "gap", "inside", "outside", "half", "halt", "read",
+)  # fmt: skip
+
+
+@case(
+    "SEQ.derived",
+    "inopportune",
+    "A session's numbers follow the window machine, through every sequence derived from it (HSI, as many states).",
+    clauses=["SEQ-02", "SEQ-03", "SEQ-04", "SEQ-05", "SEQ-06", "SEQ-07", "SEQ-08", "SEQ-11", "SEQ-13"],
+    needs="virtual",
+)
+def test_derived(bench: Bench) -> None:
+    expect_follows(bench, "window", DERIVED_INPUTS)

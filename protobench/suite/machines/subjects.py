@@ -2,14 +2,15 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
-from protobench.judge import Exchange
+from protobench.judge import Exchange, Failed, Inconclusive
 from protobench.suite.bench import Bench
-from protobench.suite.machines.compare import Tape
+from protobench.suite.machines.compare import RESET, Tape, compare
+from protobench.suite.machines.derive import derive
 from protobench.suite.machines.mealy import Mealy, Subject
-from protobench.suite.machines.window import clause_of, window_machine
+from protobench.suite.machines.window import INPUTS, clause_of, window_machine
 from protobench.suite.machines.window_driver import WindowDriver
 
 
@@ -46,10 +47,10 @@ class PortTape(Tape):
         return tuple(self._port.exchange())
 
 
-def _window(bench: Bench) -> Prepared:
+def _window(bench: Bench, inputs: Sequence[str] = tuple(INPUTS)) -> Prepared:
     return Prepared(
         name="window",
-        machine=window_machine(),
+        machine=window_machine(inputs),
         subject=WindowDriver(bench),
         clause=clause_of,
         read="read",
@@ -59,9 +60,32 @@ def _window(bench: Bench) -> Prepared:
     )
 
 
-MACHINES: dict[str, Callable[[Bench], Prepared]] = {"window": _window}
+MACHINES: dict[str, Callable[..., Prepared]] = {"window": _window}
 
 
-def prepare(bench: Bench, name: str) -> Prepared:
-    """The machine of this name for the module behind the bench; the bench has begun. KeyError for another name."""
-    return MACHINES[name](bench)
+def prepare(bench: Bench, name: str, inputs: Sequence[str] | None = None) -> Prepared:
+    """The machine of this name for the module behind the bench, which has begun; with these of its inputs alone.
+
+    KeyError for another name.
+    """
+    return MACHINES[name](bench) if inputs is None else MACHINES[name](bench, inputs)
+
+
+def expect_follows(bench: Bench, name: str, inputs: Sequence[str] | None = None) -> None:
+    """Judge in a case: Failed where a derived sequence differs, Inconclusive where one does not repeat.
+
+    The sequences find every module with at most as many states as the machine that differs from it.
+    """
+    prepared = prepare(bench, name, inputs)
+    words = sorted(derive(prepared.machine, "HSI", 0), key=len)
+    done = compare(prepared.machine, prepared.subject, words, lambda _: True)
+    if done.difference is not None:
+        word, found = done.difference.word, done.difference.found
+        before = ", ".join(word[: max(found.at, 0)]) or "the start"
+        symbol = word[found.at] if found.at != RESET else "the way back to the start"
+        raise Failed(
+            f"after {before}: {symbol} must bring {found.expected}; it brought {found.got}",
+            clause=found.clause or prepared.clause(found.expected),
+        )
+    if done.unrepeated:
+        raise Inconclusive(f"a difference after {', '.join(done.unrepeated[0])} did not come again")

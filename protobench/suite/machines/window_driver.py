@@ -137,6 +137,7 @@ class WindowDriver:
     def _note(self, number: int) -> None:
         self._used.add(number)
         self._highest = number
+        self._tester.use_number(number)  # whoever goes on with this session goes on behind it
 
     def _copy(self, place: int) -> str:
         """The bytes of a stored command; before there is one, a new command."""
