@@ -9,7 +9,7 @@ import structlog
 import typer
 
 from protobench import __version__
-from protobench.cli import check, contract, decode, emulate, ics, states
+from protobench.cli import check, contract, decode, emulate, ics, robustness, states
 
 app = typer.Typer(
     name="protobench",
@@ -23,6 +23,7 @@ app.command("check")(check.check)
 app.command("emulate")(emulate.emulate)
 app.command("states")(states.states)
 app.command("decode")(decode.decode)
+app.command("robustness")(robustness.robustness)
 app.add_typer(contract.app, name="contract")
 app.add_typer(ics.app, name="ics")
 

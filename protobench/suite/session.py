@@ -89,10 +89,10 @@ class Session:
 
     def __exit__(self, kind: type[BaseException] | None, *rest: object) -> None:
         if kind is not None:
-            self._halt()
+            self.halt()
         self.close()
 
-    def _halt(self) -> None:
+    def halt(self) -> None:
         """Whatever broke the run off, the module does not go on moving for it."""
         with contextlib.suppress(LinkError):
             self.bench.a.send("halt")

@@ -218,14 +218,11 @@ class Answers:
             model.violate(clause, f"an outcome that cannot be: {reading.words}")
 
     def _fault(self, reading: Reading, data: bytes) -> None:  # noqa: ARG002
-        """A latching fault that was to be expected changes nothing here; another is the module's own."""
+        """A fault that none of the worlds has is the module's own, or its telling crossed its clearing."""
         fields = reading.fields or {}
-        if self.model.worlds is not None and fields.get("severity") == "latching":
-            left = {world for world in self.model.worlds if world.state.fault}
-            if left:
-                self.model.worlds = left
-            else:
-                self.model.lose()
+        worlds = self.model.worlds
+        if worlds and fields.get("severity") == "latching" and not any(world.state.fault for world in worlds):
+            self.model.lose()
 
     def _started(self, reading: Reading, data: bytes) -> None:  # noqa: ARG002
         if not self.model.restart_asked:
@@ -238,6 +235,8 @@ class Answers:
         if model.worlds is None:
             return
         until = model.telemetry.get((frame.destination, frame.session, frame.number))
+        if until is None and not model.history.knows(frame.destination, frame.session):
+            return  # asked for before the model began
         if until is None:
             model.violate("TIM-04", f"telemetry that nothing asked for: {reading.words}")
         elif model.now > until + until // 100 + model.facts.receipt_ms * MS + model.late_ns:

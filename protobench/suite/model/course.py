@@ -84,7 +84,7 @@ class Course:
             ways = [False]
         else:
             no_return_ns = facts.no_return_ms * MS
-            if now < running.low + no_return_ns - RACE_NS:
+            if now + 2 * self.slack_ns < running.low + no_return_ns - RACE_NS:
                 ways = [False]
             elif now > running.high + no_return_ns + RACE_NS + self.slack_ns:
                 ways = [True]

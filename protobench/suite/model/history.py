@@ -45,6 +45,15 @@ class History:
         memory = self._memories.get(request.key[:2])
         return None if memory is None else memory.stored.get(request.frame.number)
 
+    def knows(self, source: int, session: int) -> bool:
+        """Whether a command of this session was judged."""
+        return (source, session) in self._memories
+
+    def highest(self, source: int, session: int) -> int | None:
+        """The highest number of a session; None for one that is not known."""
+        memory = self._memories.get((source, session))
+        return None if memory is None else memory.highest
+
     def judge(self, request: Request) -> str:
         """What the number of a command means; a new one is consumed, and stored unless it went to many.
 

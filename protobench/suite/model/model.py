@@ -101,7 +101,7 @@ class Model:
 
     def sent(self, data: bytes, time_ns: int) -> None:
         """A bare frame was sent; ``time_ns`` of its last byte."""
-        self.advance(time_ns)
+        self.advance(time_ns, ahead_ns=self.late_ns)  # more may happen before it arrives
         self._requests.sent(data)
         self._overdue()
 
@@ -129,11 +129,11 @@ class Model:
         """The module's clock was told between ``sent_ns`` and now."""
         self._clock = (clock, self.now, (self.now - sent_ns) // 1000 + self.late_ns // 1000 + 1)
 
-    def advance(self, time_ns: int) -> None:
-        """Let time pass: what can have happened by itself may have."""
+    def advance(self, time_ns: int, ahead_ns: int = 0) -> None:
+        """Let time pass: what can have happened by itself, up to so much later, may have."""
         since, self.now = self.now, max(self.now, time_ns)
         if self.worlds is not None:
-            worlds = self.course.futures(self.worlds, since, self.now, WORLDS_MAX)
+            worlds = self.course.futures(self.worlds, since, self.now + ahead_ns, WORLDS_MAX)
             if len(worlds) > WORLDS_MAX:
                 self.lose()
             else:
