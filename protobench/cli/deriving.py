@@ -160,9 +160,13 @@ def _head(session: Session) -> dict[str, Any]:
 
 
 def _watcher(budget_s: float | None, told: Callable[[int], None]) -> states_run.Watcher:
-    begin = time.monotonic()
+    begin: float | None = None
 
     def goes_on(done: int) -> bool:
+        nonlocal begin
+        begin = (
+            time.monotonic() if begin is None else begin
+        )  # the budget is for the sequences, not for deriving them
         told(done)
         return budget_s is None or time.monotonic() - begin < budget_s
 

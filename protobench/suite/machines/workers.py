@@ -104,11 +104,14 @@ class _Watch:
 
     def __init__(self, connection: Connection, budget_s: float | None) -> None:
         self._connection = connection
-        self._begin = self._told = time.monotonic()
+        self._begin: float | None = None
+        self._told = 0.0
         self._budget_s = budget_s
 
     def __call__(self, done: int) -> bool:
         now = time.monotonic()
+        if self._begin is None:  # the budget is for the sequences, not for deriving them
+            self._begin = now
         if now - self._told >= TELL_S:
             self._told = now
             order = self._order(done)
