@@ -197,7 +197,7 @@ class Bench:
         block = self.language.stuff(frame) + b"\0"
         self.port.send_raw(block[: len(block) // 2])
         self.port.wait_ms(apart_ms)
-        self.port.watch.sent(frame, self.language.read(frame), self.port.now_ns)
+        self.port.note_sent(frame, self.language.read(frame), self.port.now_ns)
         return self.port.send_raw(block[len(block) // 2 :], lead=False)
 
     # ------------------------------------------------------------ before and after a case

@@ -166,8 +166,7 @@ class Port:
             time_ns = self._send_units(*frames)
         for frame in frames:
             reading = self.language.read(frame)
-            self.watch.sent(frame, reading, time_ns)
-            self._tell_sent(frame, time_ns)
+            self.note_sent(frame, reading, time_ns)
             self._record("->", time_ns, frame, reading)
         return time_ns
 
@@ -182,11 +181,12 @@ class Port:
         time_ns = self._send_units(unit)
         self._record("->", time_ns, data, "raw bytes")
         for frame in self.language.split(data):
-            self.watch.sent(frame, self.language.read(frame), time_ns)
-            self._tell_sent(frame, time_ns)
+            self.note_sent(frame, self.language.read(frame), time_ns)
         return time_ns
 
-    def _tell_sent(self, frame: bytes, time_ns: int) -> None:
+    def note_sent(self, frame: bytes, reading: Reading, time_ns: int) -> None:
+        """A frame was sent, perhaps in pieces: whoever judges what comes back has to know."""
+        self.watch.sent(frame, reading, time_ns)
         if self.beside is not None:
             self.beside.sent(frame, time_ns)
 

@@ -224,7 +224,7 @@ def test_half_bridged(bench: Bench) -> None:
         cut = max(1, int(len(block) * share))
         bench.port.send_raw(block[:cut])
         bench.port.wait_ms(gap_ms)
-        bench.port.watch.sent(frame, bench.language.read(frame), bench.port.now_ns)
+        bench.port.note_sent(frame, bench.language.read(frame), bench.port.now_ns)
         time_ns = bench.port.send_raw(block[cut:], lead=False)
         if bench.a.answer(bench.a.sent(frame, time_ns)) is None:
             raise Failed(f"a frame with a gap of {gap_ms} ms was not answered", clause="FRM-10")
@@ -354,7 +354,7 @@ def test_cut_anywhere(bench: Bench) -> None:
         frame = bench.a.frame("status")
         block = bench.language.stuff(frame) + b"\0"
         pieces = [block[:cut], block[cut:]] if cut else [bytes([byte]) for byte in block]
-        bench.port.watch.sent(frame, bench.language.read(frame), bench.port.now_ns)
+        bench.port.note_sent(frame, bench.language.read(frame), bench.port.now_ns)
         for piece in pieces:
             time_ns = bench.port.send_raw(piece, lead=False)
         if bench.a.answer(bench.a.sent(frame, time_ns)) is None:

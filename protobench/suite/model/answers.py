@@ -50,6 +50,8 @@ class Answers:
 
     def _stray(self, key: tuple[int, int, int], reading: Reading) -> None:
         waiting = self.model.many.get(key)
+        if key in self.model.unjudged or key[:2] not in self.model.asking:
+            return  # asked for before the model began
         if waiting is None:
             self.model.violate("ACK-01", f"an answer that nothing asked for: {reading.words}")
         elif waiting[0] != reading.kind or (reading.fields or {}).get("result") == "refused":
@@ -144,10 +146,8 @@ class Answers:
         formed, doomed = len(world.kept) + len(world.owed), len(world.waiting(DOOMED))
         if not len(world.kept) <= fields["unconfirmed"] <= formed + doomed:
             wrong.append("unconfirmed")
-        if (
-            holder is not None
-            and fields["lease_remaining"] * MS > holder.high - model.now + model.late_ns + LEFT_NS
-        ):
+        left_ns = max(0, holder.high - model.now) if holder is not None else 0
+        if fields["lease_remaining"] * MS > left_ns + model.late_ns + ROUNDED_NS:
             wrong.append("lease_remaining")
         return wrong
 
@@ -243,7 +243,7 @@ class Answers:
             model.violate("TIM-04", f"telemetry after its duration: {reading.words}")
 
 
-LEFT_NS = 2 * MS  # lease_remaining is rounded up, and the answer was formed before it came
+ROUNDED_NS = 2 * MS  # lease_remaining is rounded up, and the answer was formed before it came
 
 _EVENTS: dict[str, Callable[[Answers, Reading, bytes], None]] = {
     "outcome": Answers._outcome,

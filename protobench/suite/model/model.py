@@ -73,6 +73,8 @@ class Model:
         self.confirmed: dict[int, int] = {}
         self.telemetry: dict[tuple[int, int, int], int] = {}
         self.restart_asked = True
+        self.unjudged: set[tuple[int, int, int]] = set()
+        self.asking: set[tuple[int, int]] = set()
         self.places = 0
         self.now = 0
         self._clock: tuple[int, int, int] | None = None
@@ -84,6 +86,7 @@ class Model:
     def lose(self) -> None:
         """Judge no more until the next report to begin from."""
         self.worlds = None
+        self.unjudged |= {pending.request.key for pending in self.pending}
         self.pending.clear()
         self.restart_asked = True
 

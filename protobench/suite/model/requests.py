@@ -34,6 +34,7 @@ class Requests:
             pending.alone = False
         if request is None:
             return
+        model.asking.add(request.key[:2])
         if model.worlds is None:
             self._unjudged(request)
             return
@@ -50,8 +51,7 @@ class Requests:
         """Nothing is known: the history is, and what a request asked may answer."""
         if request.class_ == "command" and request.name != "halt" and not request.bad_length:
             self.model.history.judge(request)
-        self._pend(request, copied=False)
-        self.model.pending[-1:] = []
+        self.model.unjudged.add(request.key)
 
     # ------------------------------------------------------------ addresses
 

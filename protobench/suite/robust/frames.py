@@ -70,7 +70,7 @@ class Frames:
     def _value(self, kind: str, field: Field, rng: random.Random) -> Any:
         description = self.bench.facts.description
         known: dict[str, Callable[[], Any]] = {
-            "halt_count": lambda: self.beliefs.halt_count,
+            "halt_count": lambda: max(0, self.beliefs.halt_count - (rng.random() < 0.1)),
             "hardware_id": lambda: description["hardware_id"],
             "address": lambda: self.bench.address,
             "number": lambda: rng.choice(self.beliefs.moves[-3:] or [0]),

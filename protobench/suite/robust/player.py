@@ -14,6 +14,7 @@ from protobench.suite.port import Received
 from protobench.suite.robust.frames import NEVER_DAMAGED, Beliefs, Frames
 from protobench.suite.robust.steps import WAITS_MS, Step
 from protobench.suite.tester import MODULUS, PATIENCE_MS, Tester
+from protobench.wire import Dropped
 
 REAL_LATE_MS = 1000  # a peer's program may be kept from running for so long without being at fault
 FRAMES_KEPT = 40
@@ -22,7 +23,7 @@ MS = 1_000_000
 
 @dataclass(slots=True)
 class Tally:
-    """What sequences did: frames sent by act, answers by kind or reason, drops by reason, in bounded memory."""
+    """What sequences did: frames by act, answers by kind or reason, drops by reason, in bounded memory."""
 
     sequences: int = 0
     sent: Counter[str] = field(default_factory=Counter)
@@ -32,6 +33,7 @@ class Tally:
     commands: Counter[str] = field(default_factory=Counter)
     events: Counter[str] = field(default_factory=Counter)
     slowest_ms: float = 0.0
+    steps: int = 0
     judged: int = 0
 
 
@@ -53,6 +55,7 @@ class Player:
         self.outcomes: list[Received] = []
         self.testers: list[Tester] = []
         self._sent_ns: int | None = None
+        self._many_until_ns = 0
 
     def play(self, steps: Sequence[Step]) -> None:
         """Play a sequence on a module at rest without a lease. Raises Failed with the clause that broke."""
@@ -102,6 +105,9 @@ class Player:
 
     def _alive(self) -> None:
         """After anything at all, a sound request gets a sound answer."""
+        last_ns = self._many_until_ns + round(self._patience_ms() * MS)
+        if last_ns > self.port.now_ns:
+            self.port.wait_until(last_ns)  # answers to many are none of the next sequence's
         sent = self.testers[0].send("describe")
         answer = self.testers[0].answer(sent, self._patience_ms())
         if answer is None or answer.kind != "description":
@@ -123,11 +129,13 @@ class Player:
     def _await(self) -> None:
         """Let the answers come that are owed."""
         deadline_ns = self.port.now_ns + round((self.bench.facts.receipt_ms + 1 + self.late_ms) * MS)
-        while self.model.pending and self.port.now_ns < deadline_ns:
+        while (self.model.pending or self.model.lost) and self.port.now_ns < deadline_ns:
             self.port.pump(deadline_ns)
         self._take()
+        self._many_until_ns = max([self._many_until_ns, *(until for _, until in self.model.many.values())])
         if not self.model.violations:
             self.model.quiet(self.port.now_ns)
+        self.tally.steps += 1
         self.tally.judged += not self.model.lost
 
     def _take(self) -> None:
@@ -199,14 +207,30 @@ class Player:
 
     def _twist(self, step: Step, tester: Tester, rng: random.Random) -> None:
         if step.how == "conflict":
-            number = (tester.next_number() - 1) % MODULUS
-            self._send(step, tester.frame("renew-lease", duration=rng.randint(500, 30000), number=number))
+            self._send(step, self._conflicting(rng) or tester.frame("status"))
         elif step.how in ("kind", "class"):
             self._send(step, tester.frame(self._other_kind(step.how, rng)))
         else:
             frame = self.frames.twisted(tester, step.kind, step.how, rng)
             if frame is not None and self._may_go(frame, step):
                 self._send(step, frame)
+
+    def _conflicting(self, rng: random.Random) -> bytes | None:
+        """Another request under the number of a command that was sent."""
+        low, high = self.bench.contract.kind_range("command")
+        halt, cancel = self.bench.language.code("halt"), self.bench.language.code("cancel")
+        used = [frame for frame in self.beliefs.frames if low <= frame[1] <= high and frame[1] != halt]
+        unpacked = self.bench.language.unpack(rng.choice(used[-6:] or [b""]))
+        if isinstance(unpacked, Dropped):
+            return None
+        where = {name: getattr(unpacked, name) for name in ("source", "destination", "session", "number")}
+        return self.bench.language.pack(cancel, b"\x81\x02\x00", **where)
+
+    def _rush(self, step: Step, tester: Tester, rng: random.Random) -> None:
+        """One motion after the other, none confirmed, until there is no place left."""
+        for _ in range(rng.randint(3, 12) if self.bench.facts.motions else 0):
+            self._send(step, self._request(tester, "move", rng))
+            self._await()
 
     def _other_kind(self, how: str, rng: random.Random) -> int:
         """A number of no kind among the requests, or one of what is no request."""
@@ -269,9 +293,8 @@ class Player:
         self.port.send_raw(pieces[0])
         for piece in pieces[1:]:
             self.port.send_raw(piece, lead=False)
-        self.port.watch.sent(frame, self.bench.language.read(frame), self.port.now_ns)
+        self.port.note_sent(frame, self.bench.language.read(frame), self.port.now_ns)
         self.port.send_raw(b"\0", lead=False)
-        self.model.sent(frame, self.port.now_ns)
 
 
 _ACTS: dict[str, Callable[[Player, Step, Tester, random.Random], None]] = {
@@ -282,6 +305,7 @@ _ACTS: dict[str, Callable[[Player, Step, Tester, random.Random], None]] = {
     "copy": Player._copy,
     "twist": Player._twist,
     "burst": Player._burst,
+    "rush": Player._rush,
     "damage": Player._damage,
     "stream": Player._stream,
 }

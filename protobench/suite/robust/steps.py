@@ -14,6 +14,7 @@ CONTROLLERS = 3  # two addresses, one of them with two sessions: within the leas
 WAITS_MS = (0, 1, 5, 20, 60, 150, 400, 700, 2500)
 ACTS = {  # act: its share
     "sound": 46, "ready": 8, "confirm": 8, "wait": 10, "copy": 5, "twist": 16, "burst": 3, "damage": 5, "stream": 4,
+    "rush": 3,
 }  # fmt: skip
 SHARES = {  # of sound requests; what is not named has a share of 1
     "move": 14, "cancel": 5, "halt": 3, "energize": 4, "renew-lease": 3, "take-lease": 3, "status": 6, "reset": 3,
@@ -81,7 +82,7 @@ class Grammar:
         act = act or rng.choices(list(ACTS), list(ACTS.values()))[0]
         who = rng.choices(range(CONTROLLERS), (8, 1, 1))[0]
         draw = rng.randrange(1 << 32)
-        if act in ("ready", "confirm", "copy", "wait"):
+        if act in ("ready", "confirm", "copy", "wait", "rush"):
             return Step(act, who, "", "", draw)
         if act == "stream":
             return Step(act, who, "status", rng.choice(STREAMS), draw)
