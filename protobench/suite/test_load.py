@@ -6,6 +6,9 @@ from protobench.judge import Failed
 from protobench.suite.bench import CONTROLLER_A, Bench
 from protobench.suite.case import case
 from protobench.suite.language import canonical
+from protobench.suite.robust.campaign import play_counted
+from protobench.suite.robust.player import Tally
+from protobench.suite.robust.steps import Grammar
 from protobench.suite.tools import garbage_blocks
 
 FLOOD = 400
@@ -163,3 +166,26 @@ def test_queries_of_many(bench: Bench) -> None:
     bench.port.wait_ms(250 + bench.facts.receipt_ms)
     bench.port.take_all(lambda received: received.kind == "presence")
     bench.a.status()
+
+
+@case(
+    "LOD.generated",
+    "invalid",
+    "Generated sequences of sound, untimely and damaged requests are each answered as the contract says.",
+    clauses=["LOD-02", "LOD-01", "ACK-05", "ACK-01", "FRM-12", "SEQ-02"],
+)
+def test_generated(bench: Bench) -> None:
+    grammar = Grammar(bench.contract, bench.facts)
+    seed = bench.rng.randrange(1 << 32)
+    is_virtual = bench.facts.has("virtual")
+    end_ns = bench.port.now_ns + GENERATED_REAL_MS * 1_000_000
+    for index in range(GENERATED):
+        if index:
+            bench.end()
+        play_counted(bench, grammar.sequence(seed, index), Tally())
+        if not is_virtual and bench.port.now_ns > end_ns:
+            break
+
+
+GENERATED = 40  # sequences in virtual time
+GENERATED_REAL_MS = 1500

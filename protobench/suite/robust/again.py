@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 
+from protobench.contract import load_contract
 from protobench.suite.robust.steps import Step, read_step
 
 FORM = 1
@@ -36,6 +37,7 @@ def read_again(path: Path) -> list[Step]:
     if not 0 < len(data["steps"]) <= STEPS_MAX:
         raise ValueError(f"{path}: steps: {len(data['steps'])}; there must be 1 to {STEPS_MAX}")
     try:
-        return [read_step(row) for row in data["steps"]]
+        contract = load_contract()
+        return [read_step(row, contract) for row in data["steps"]]
     except ValueError as error:
         raise ValueError(f"{path}: {error}") from None

@@ -12,11 +12,24 @@ from protobench.suite.case import CaseInfo
 from protobench.suite.robust.player import Player, Tally
 from protobench.suite.robust.steps import Grammar, Step
 from protobench.suite.session import Session
+from protobench.suite.tools import SATURATION
 
 FAILURES_MAX = 5
 SHRINK_PLAYS_MAX = 150
 CLAUSES = ("LOD-01", "LOD-02")
 Progress = Callable[[int, int], None]
+
+
+def play_counted(bench: Bench, steps: Sequence[Step], tally: Tally) -> None:
+    """Play one sequence; what the module counted as dropped meanwhile must be what was sent to be dropped."""
+    before, _ = bench.counters()
+    player = Player(bench, tally)
+    player.play(steps)
+    after, _ = bench.counters()
+    counted = {name: after[name] - count for name, count in before.items()}
+    tally.drops.update(counted)
+    if SATURATION not in after.values():
+        player.check_drops(counted)
 
 
 @dataclass(slots=True)
@@ -64,10 +77,7 @@ class Campaign:
         counted = self.tally if tally is None else tally
 
         def function(bench: Bench) -> None:
-            before, _ = bench.counters()
-            Player(bench, counted).play(steps)
-            after, _ = bench.counters()
-            counted.drops.update({name: after[name] - count for name, count in before.items()})
+            play_counted(bench, steps, counted)
 
         name = f"LOD.sequence-{index}"
         purpose = "A generated sequence is answered as the contract says."

@@ -4,12 +4,14 @@ from __future__ import annotations
 
 import random
 from collections import Counter
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 
 from protobench.judge import Failed
+from protobench.links import Framing
 from protobench.suite.bench import CONTROLLER_A, CONTROLLER_B, Bench
 from protobench.suite.model import Model
+from protobench.suite.model.drops import NOT_FOLLOWED, UNSURE, drop_reason
 from protobench.suite.port import Received
 from protobench.suite.robust.frames import NEVER_DAMAGED, Beliefs, Frames
 from protobench.suite.robust.steps import WAITS_MS, Step
@@ -56,6 +58,7 @@ class Player:
         self.testers: list[Tester] = []
         self._sent_ns: int | None = None
         self._many_until_ns = 0
+        self.drops: Counter[str] = Counter()
 
     def play(self, steps: Sequence[Step]) -> None:
         """Play a sequence on a module at rest without a lease. Raises Failed with the clause that broke."""
@@ -173,6 +176,7 @@ class Player:
     def _send(self, step: Step, *frames: bytes) -> None:
         self.tally.sent[step.act] += len(frames)
         self.beliefs.frames = [*self.beliefs.frames, *frames][-FRAMES_KEPT:]
+        self.drops.update(drop_reason(self.model, frame) for frame in frames)
         self._sent_ns = self.port.send(*frames)
 
     def _sound(self, step: Step, tester: Tester, rng: random.Random) -> None:
@@ -277,14 +281,36 @@ class Player:
             "early-zero": half + b"\0" + stuffed[len(half) :] + b"\0",
         }
         if step.how in whole:
+            self._count_raw(whole[step.how])
             self.port.send_raw(whole[step.how])
         elif self.bench.facts.has("gaps"):
             self._gap(step.how, stuffed, half)
+
+    def _count_raw(self, data: bytes) -> None:
+        """What of raw bytes must be counted as dropped."""
+        if self.port.link.framing is not Framing.STREAM:
+            self.drops[UNSURE] += 1  # a segment is cut by its own rules
+            return
+        decoder = self.bench.language.stream_decoder()
+        for unit in decoder.feed(data, 0):
+            self.drops[unit.reason if isinstance(unit, Dropped) else drop_reason(self.model, unit)] += 1
+
+    def check_drops(self, counted: Mapping[str, int]) -> None:
+        """The module's counters must have risen by what was sent. Raises Failed."""
+        if self.drops[UNSURE]:
+            return
+        for name, count in counted.items():
+            if name not in NOT_FOLLOWED and count != self.drops[name]:
+                raise Failed(
+                    f"{self.drops[name]} frames to be dropped as {name}; counted were {count}",
+                    clause="FRM-12",
+                )
 
     def _gap(self, how: str, stuffed: bytes, half: bytes) -> None:
         """A frame in two pieces, or after half a frame that is too old; or byte by byte."""
         frame = self.bench.language.split(stuffed + b"\0")[0]
         if how == "gap-long":
+            self.drops["half-frame"] += 1
             self.port.send_raw(half)
             self.port.wait_ms(1100 + self.late_ms)
             self.port.send(frame)

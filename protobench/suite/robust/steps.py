@@ -28,6 +28,7 @@ TWISTS = (
     "half-way", "conflict", "kind", "class", "newer-by-far",
 )  # fmt: skip
 DAMAGES = ("flip", "flip-repaired", "cut", "cut-repaired", "extend", "extend-repaired")
+NEED_KIND = ("sound", "twist", "damage", "burst")
 STREAMS = ("garbage", "zeros", "glued", "half", "gap-short", "gap-long", "too-long", "early-zero", "bytewise")
 
 
@@ -46,7 +47,7 @@ class Step(NamedTuple):
         return f"controller {self.who + 1}: {told} [{self.draw}]"
 
 
-def read_step(row: Any) -> Step:
+def read_step(row: Any, contract: Contract) -> Step:
     """A step from JSON; ValueError for anything else."""
     types = (str, int, str, str, int)
     if not isinstance(row, list) or len(row) != len(types):
@@ -57,6 +58,12 @@ def read_step(row: Any) -> Step:
     step = Step(*row)
     if step.act not in ACTS or not 0 <= step.who < CONTROLLERS:
         raise ValueError(f"step {row!r}: no such act or controller")
+    names = {kind.name for kind in contract.kinds if kind.is_request} - LEFT_OUT
+    if step.kind not in names and (step.kind or step.act in NEED_KIND):
+        raise ValueError(f"step {row!r}: no such kind of request")
+    ways = {"twist": TWISTS, "damage": DAMAGES, "stream": STREAMS}.get(step.act, ("",))
+    if step.how not in ways:
+        raise ValueError(f"step {row!r}: no such way")
     return step
 
 
