@@ -90,6 +90,7 @@ class Contract:
         )
         self._kinds = _by("name", self.kinds)
         self._codes = _by("code", self.kinds)
+        self._ranges = dict(self.frame.kind_ranges.items())
         self._drops = _by("name", self.drops)
         self._drop_numbers = _by("number", self.drops)
         self._faults = _by("name", self.faults)
@@ -112,7 +113,7 @@ class Contract:
 
     def kind_range(self, name: str) -> tuple[int, int]:
         """Return the first and last code of a range of ``frame.kind_ranges``."""
-        return _found(dict(self.frame.kind_ranges.items()), name, "kind range")
+        return _found(self._ranges, name, "kind range")
 
     def enum_values(self, name: str) -> Mapping[str, int]:
         """Return the numbers of an enumeration, by name; ``refusal`` is the one of receipt.reason."""

@@ -14,13 +14,24 @@ from protobench.wire import Codec, Dropped, Frame, StreamDecoder, WireError, stu
 
 @dataclass(slots=True)
 class Reading:
-    """A frame in words. ``fields`` is None, and ``problem`` says why, where the body breaks the contract."""
+    """A frame and what it says. ``fields`` is None, and ``problem`` says why, where the body breaks the contract.
+
+    ``told``: its words where they are not made of header and fields; the others are made when somebody reads them.
+    """
 
     frame: Frame | None
     kind: str
     fields: dict[str, Any] | None
     problem: str
-    words: str
+    told: str | None = None
+
+    @property
+    def words(self) -> str:
+        """The frame in words."""
+        if self.told is not None or self.frame is None:
+            return self.told or ""
+        shown = ", ".join(f"{field}={_shown(value)}" for field, value in (self.fields or {}).items())
+        return f"{_head(self.frame, self.kind)} {{{shown}}}"
 
 
 class Language:
@@ -110,24 +121,25 @@ class Language:
         if isinstance(frame, Dropped):
             return Reading(None, "", None, f"{frame.reason}: {frame.detail}", f"dropped: {frame.reason}")
         name = self._names.get(frame.kind)
-        head = _head(frame, name or f"kind 0x{frame.kind:02x}")
         if name is None:
-            return Reading(frame, f"0x{frame.kind:02x}", None, "a kind that the contract does not have", head)
+            kind = f"0x{frame.kind:02x}"
+            head = _head(frame, f"kind {kind}")
+            return Reading(frame, kind, None, "a kind that the contract does not have", head)
         dropped = self.codec.frames.check_length(frame)
         if dropped is not None:
-            return Reading(frame, name, None, f"{dropped.reason}: {dropped.detail}", head)
-        kind = self.codec.kind(name)
+            return Reading(frame, name, None, f"{dropped.reason}: {dropped.detail}", _head(frame, name))
+        known = self.codec.kind(name)
         try:
-            message = kind.decode(frame.body, self.contract.is_multicast(frame.destination))
+            message = known.decode(frame.body, self.contract.is_multicast(frame.destination))
         except WireError as error:
-            return Reading(frame, name, None, str(error), f"{head} {error}; body {frame.body.hex()}")
+            told = f"{_head(frame, name)} {error}; body {frame.body.hex()}"
+            return Reading(frame, name, None, str(error), told)
         fields = {
             spec.name: self._named(name, spec.name, value)
-            for spec in kind.spec.fields
+            for spec in known.spec.fields
             if (value := getattr(message, spec.attribute)) is not None
         }
-        shown = ", ".join(f"{field}={_shown(value)}" for field, value in fields.items())
-        return Reading(frame, name, fields, "", f"{head} {{{shown}}}")
+        return Reading(frame, name, fields, "")
 
     def _named(self, kind: str, field: str, value: Any) -> Any:
         names = self._enums.get((kind, field))
