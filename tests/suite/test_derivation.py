@@ -14,7 +14,6 @@ from protobench.suite.machines.derive import (
     characterisation,
     derive,
     harmonised_identifiers,
-    separating_word,
     small_characterisation,
     state_identifiers,
     without_prefixes,
@@ -137,7 +136,7 @@ def test_sets_tell_states_apart(seed, states, inputs):
     for words in (characterisation(machine), small_characterisation(machine)):
         own, shared = state_identifiers(machine, words), harmonised_identifiers(machine, words)
         for one, other in pairs:
-            assert separating_word(machine, one, other) is not None
+            assert machine.separating(one, other) is not None
             for common in (words, own[one], own[other], set(shared[one]) & set(shared[other])):
                 assert any(machine.run(w, one) != machine.run(w, other) for w in common)
 

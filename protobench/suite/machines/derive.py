@@ -45,7 +45,10 @@ class Node(NamedTuple):
 
 
 class Suite:
-    """The sequences of one method, none of which begins another. Nothing but the path to a sequence is stored."""
+    """The sequences of one method, none of which begins another.
+
+    They are walked, not stored: what is kept are the few sorts of node that they pass through.
+    """
 
     def __init__(self, machine: Mealy, method: str, extra: int, attach: Attach) -> None:
         self.machine = machine
@@ -54,6 +57,7 @@ class Suite:
         self._attach = attach
         self._cover = frozenset(machine.cover().values())
         self._sizes: dict[Node, Size] = {}
+        self._known: dict[Node, list[tuple[str, Node]]] = {}  # many sequences pass through like nodes
 
     @property
     def states(self) -> int:
@@ -94,6 +98,12 @@ class Suite:
         return Node(self.machine.initial, (), self.extra + 1, frozenset())
 
     def _children(self, node: Node) -> list[tuple[str, Node]]:
+        known = self._known.get(node)
+        if known is None:
+            known = self._known[node] = self._grow(node)
+        return known
+
+    def _grow(self, node: Node) -> list[tuple[str, Node]]:
         ahead = node.tails.union(self._attach(node.state, node.left)) if node.left >= 0 else node.tails
         tails: dict[str, set[Word]] = {}
         for tail in ahead:
@@ -164,11 +174,6 @@ _MAKERS: dict[str, Callable[[Mealy, tuple[Word, ...]], Attach]] = {"W": _w, "Wp"
 # ---------------------------------------------------------------- words that tell states apart
 
 
-def separating_word(machine: Mealy, one: str, other: str) -> Word | None:
-    """A shortest word with different outputs from two states; None when they are equivalent."""
-    return machine.starting(one).difference(machine.starting(other))
-
-
 def characterisation(machine: Mealy) -> tuple[Word, ...]:
     """A characterisation set: for each two states a shortest word that tells them apart, shortest words first.
 
@@ -227,7 +232,7 @@ def without_prefixes(words: Iterable[Word]) -> list[Word]:
 
 
 def _word(machine: Mealy, one: str, other: str) -> Word:
-    word = separating_word(machine, one, other)
+    word = machine.separating(one, other)
     if word is None:
         raise ValueError(
             f"states {one!r} and {other!r}: no word tells them apart; the machine is not minimal"

@@ -66,10 +66,6 @@ class Mealy:
             at = self.step(at, symbol)[1]
         return at
 
-    def starting(self, state: str) -> Mealy:
-        """The same machine with another initial state."""
-        return Mealy(self.inputs, state, self.table)
-
     def cover(self) -> dict[str, Word]:
         """For each state that can be reached, nearest first, a shortest word that leads to it."""
         access: dict[str, Word] = {self.initial: ()}
@@ -135,22 +131,11 @@ class Mealy:
         alone = set(self.inputs) ^ set(other.inputs)
         if alone:
             raise ValueError(f"input {min(alone)!r}: only one of the two machines has it")
-        start = (self.initial, other.initial)
-        access: dict[tuple[str, str], Word] = {start: ()}
-        waiting = deque([start])
-        while waiting:
-            pair = waiting.popleft()
-            for symbol in self.inputs:
-                mine, mine_after = self.table[pair[0], symbol]
-                theirs, theirs_after = other.table[pair[1], symbol]
-                word = (*access[pair], symbol)
-                if mine != theirs:
-                    return word
-                after = (mine_after, theirs_after)
-                if after not in access:
-                    access[after] = word
-                    waiting.append(after)
-        return None
+        return _apart(self.inputs, self.table, other.table, (self.initial, other.initial))
+
+    def separating(self, one: str, other: str) -> Word | None:
+        """A shortest word that brings different outputs from two states; None when they are equivalent."""
+        return _apart(self.inputs, self.table, self.table, (one, other))
 
     def dot(self, name: str = "machine") -> str:
         """The machine as a graph for Graphviz; transitions between the same two states share an edge."""
@@ -166,6 +151,25 @@ class Mealy:
         for (state, after), labels in edges.items():
             lines.append(f"  {number[state]} -> {number[after]} [label={_quoted(chr(10).join(labels))}];")
         return "\n".join([*lines, "}", ""])
+
+
+def _apart(inputs: Word, ours: Table, theirs: Table, start: tuple[str, str]) -> Word | None:
+    """A shortest word with different outputs, by breadth first search over pairs of states."""
+    access: dict[tuple[str, str], Word] = {start: ()}
+    waiting = deque([start])
+    while waiting:
+        pair = waiting.popleft()
+        for symbol in inputs:
+            our_output, our_next = ours[pair[0], symbol]
+            their_output, their_next = theirs[pair[1], symbol]
+            word = (*access[pair], symbol)
+            if our_output != their_output:
+                return word
+            after = (our_next, their_next)
+            if after not in access:
+                access[after] = word
+                waiting.append(after)
+    return None
 
 
 def _numbered(of: dict[str, _Key]) -> dict[str, int]:
