@@ -14,9 +14,9 @@ BROKEN = "late-start-runs"  # of tests/defects/broken_modules.py
 
 
 def test_a_sound_module() -> None:
-    result = invoke("robustness", "--sequences", "20", "--seed", "3")
+    result = invoke("robustness", "--sequences", "8", "--seed", "3")
     assert result.exit_code == 0, result.output
-    assert "20 sequences, seed 3: 0 failed" in result.stdout
+    assert "8 sequences, seed 3: 0 failed" in result.stdout
     assert "slowest answer" in result.stdout
 
 

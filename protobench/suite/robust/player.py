@@ -16,7 +16,7 @@ from protobench.suite.port import Received
 from protobench.suite.robust.frames import NEVER_DAMAGED, Beliefs, Frames
 from protobench.suite.robust.steps import WAITS_MS, Step
 from protobench.suite.tester import MODULUS, PATIENCE_MS, Tester
-from protobench.wire import Dropped
+from protobench.wire import Dropped, Frame
 
 REAL_LATE_MS = 1000  # a peer's program may be kept from running for so long without being at fault
 FRAMES_KEPT = 40
@@ -131,7 +131,8 @@ class Player:
 
     def _await(self) -> None:
         """Let the answers come that are owed."""
-        deadline_ns = self.port.now_ns + round((self.bench.facts.receipt_ms + 1 + self.late_ms) * MS)
+        late_ms = self.port.u_ms if self.model.lost else self.late_ms
+        deadline_ns = self.port.now_ns + round((self.bench.facts.receipt_ms + 1 + late_ms) * MS)
         while (self.model.pending or self.model.lost) and self.port.now_ns < deadline_ns:
             self.port.pump(deadline_ns)
         self._take()
@@ -161,10 +162,11 @@ class Player:
         if received.kind == "receipt":
             self.tally.reasons[received.get("reason") or "accepted"] += 1
         lease, count = received.get("lease"), received.get("halt_count")
+        holder = received.get("holder_session")
         if received.kind == "receipt" and received["result"] == "accepted" and lease is not None:
-            self.beliefs.holder = next(
-                (one for one in self.testers if one.session == received.frame.session), None
-            )
+            holder = received.frame.session
+        if holder is not None:
+            self.beliefs.holder = next((one for one in self.testers if one.session == holder), None)
         if lease is not None:
             for tester in self.testers:
                 tester.lease = lease
@@ -175,7 +177,8 @@ class Player:
 
     def _send(self, step: Step, *frames: bytes) -> None:
         self.tally.sent[step.act] += len(frames)
-        self.beliefs.frames = [*self.beliefs.frames, *frames][-FRAMES_KEPT:]
+        whole = [frame for frame in frames if isinstance(self.bench.language.unpack(frame), Frame)]
+        self.beliefs.frames = [*self.beliefs.frames, *whole][-FRAMES_KEPT:]
         self.drops.update(drop_reason(self.model, frame) for frame in frames)
         self._sent_ns = self.port.send(*frames)
 
@@ -312,7 +315,7 @@ class Player:
         if how == "gap-long":
             self.drops["half-frame"] += 1
             self.port.send_raw(half)
-            self.port.wait_ms(1100 + self.late_ms)
+            self.port.wait_ms(1100 + self.port.u_ms)
             self.port.send(frame)
             return
         pieces = [stuffed[:1], stuffed[1:]] if how == "gap-short" else [bytes([byte]) for byte in stuffed]
