@@ -7,11 +7,19 @@ from dataclasses import dataclass
 
 from protobench.judge import Exchange, Failed, Inconclusive
 from protobench.suite.bench import Bench
+from protobench.suite.machines import product
 from protobench.suite.machines.compare import RESET, Tape, compare
 from protobench.suite.machines.derive import derive
+from protobench.suite.machines.driver import ModuleDriver
 from protobench.suite.machines.mealy import Mealy, Subject
+from protobench.suite.machines.product import contract_machine
 from protobench.suite.machines.window import INPUTS, clause_of, window_machine
 from protobench.suite.machines.window_driver import WindowDriver
+
+WITHOUT_RESTART = (
+    "without assist it is not restarted; what the postamble does not bring back, such as epoch, history and "
+    "fault list, may hide a difference or carry one over from an earlier sequence"
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -60,7 +68,21 @@ def _window(bench: Bench, inputs: Sequence[str] = tuple(INPUTS)) -> Prepared:
     )
 
 
-MACHINES: dict[str, Callable[..., Prepared]] = {"window": _window}
+def _state(bench: Bench, inputs: Sequence[str] | None = None) -> Prepared:
+    assist = bench.facts.has("assist")
+    return Prepared(
+        name="state",
+        machine=contract_machine(bench.contract, bench.facts, inputs),
+        subject=ModuleDriver(bench),
+        clause=product.clause_of,
+        read="A.status",
+        start="a restart by assist" if assist else "re-initialised by the postamble",
+        weaker="" if assist else WITHOUT_RESTART,
+        outside="queued and stated motions, bonds, two faults at once, confirmations, starting, settings, telemetry",
+    )
+
+
+MACHINES: dict[str, Callable[..., Prepared]] = {"state": _state, "window": _window}
 
 
 def prepare(bench: Bench, name: str, inputs: Sequence[str] | None = None) -> Prepared:
