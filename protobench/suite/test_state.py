@@ -9,6 +9,8 @@ from typing import Any
 from protobench.judge import Failed, NotApplicable
 from protobench.suite.bench import Bench
 from protobench.suite.case import case
+from protobench.suite.machines.product import inputs_of
+from protobench.suite.machines.subjects import expect_follows
 from protobench.suite.port import Received, Sent
 from protobench.suite.tester import Tester
 from protobench.wire import serial_compare
@@ -451,3 +453,22 @@ def test_reads_everywhere(bench: Bench) -> None:
     a.answered(a.send("halt"))
     for kind in ("status", "describe", "read-counters", "read-motions", "read-faults", "probe"):
         a.read(kind)
+
+
+DERIVED_INPUTS = (
+    "halt", "fault", "commit", "complete", "lease-end", "A.take", "A.energize", "A.reset", "A.clear", "A.move",
+    "A.status", "B.move",
+)  # fmt: skip
+
+
+@case(
+    "STA.derived",
+    "inopportune",
+    "Activity, latches and lease follow the contract's machine through every sequence derived from it (HSI, as many "
+    "states).",
+    clauses=["STA-01", "STA-10", "STA-11", "HLT-07", "HLT-11", "LSE-03", "LSE-09", "LSE-10", "FLT-08"],
+    needs="virtual and assist",
+)
+def test_derived(bench: Bench) -> None:
+    known = inputs_of(bench.facts)
+    expect_follows(bench, "state", [symbol for symbol in DERIVED_INPUTS if symbol in known])
