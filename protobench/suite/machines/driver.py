@@ -41,6 +41,7 @@ class ModuleDriver:
         self._latches = {fault.code for fault in bench.contract.faults if fault.severity == "latching"}
         self._motion = moved(bench.facts) if bench.facts.has("travel") else None
         self._sign = 1
+        self._starts = 0
         self._steps: dict[str, Callable[[], list[str]]] = {
             "halt": self._halt,
             "lease-end": self._lease_end,
@@ -93,9 +94,7 @@ class ModuleDriver:
         """
         self._port.inbox.clear()
         if not self._assist:
-            self._bench.end()
-            self._settled()
-            self._learn()
+            self._start_again()
             return
         words = self._restart("commanded")
         if words:
@@ -104,6 +103,17 @@ class ModuleDriver:
         strays = self._events()
         if words or strays != ["started"]:
             raise Failed(f"a restart brought {joined([*words, *strays])}", clause="STA-08")
+
+    def _start_again(self) -> None:
+        """The postamble, and fresh sessions: the module still remembers the numbers of the old ones."""
+        self._bench.end()
+        self._starts += 1
+        self._bench.begin(f"command states {self._starts}")
+        self._testers = {"A": self._bench.a, "B": self._bench.b}
+        self._wait(self._quiet_ms())
+        self._port.inbox.clear()
+        self._halt_count = self._bench.a.status()["halt_count"]
+        self._settled()
 
     def step(self, symbol: str, /) -> str:
         """One input, and all that it brought until quiet.
@@ -121,7 +131,6 @@ class ModuleDriver:
     def _learn(self) -> None:
         description = self._bench.a.learn()
         self._believe(description["epoch"], description["lease"])
-        self._halt_count = self._bench.a.status()["halt_count"]
 
     def _believe(self, epoch: int, lease: int) -> None:
         for tester in self._testers.values():
