@@ -9,7 +9,7 @@ import structlog
 import typer
 
 from protobench import __version__
-from protobench.cli import check, contract, decode, emulate, ics, robustness, states
+from protobench.cli import check, contract, decode, emulate, ics, learn, robustness, states
 
 app = typer.Typer(
     name="protobench",
@@ -22,6 +22,7 @@ app = typer.Typer(
 app.command("check")(check.check)
 app.command("emulate")(emulate.emulate)
 app.command("states")(states.states)
+app.command("learn")(learn.learn)
 app.command("decode")(decode.decode)
 app.command("robustness")(robustness.robustness)
 app.add_typer(contract.app, name="contract")

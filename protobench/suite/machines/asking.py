@@ -105,7 +105,9 @@ class Asker:
         try:
             self._subject.reset()
             for symbol in word:
-                outputs.append(self._subject.step(symbol)[:OUTPUT_MAX])
+                outputs += [
+                    self._subject.step(symbol)[:OUTPUT_MAX]
+                ]  # kept even when the next one is not reached
         except CaseVerdict as verdict:  # what a module does is its output, whatever it is
             words = f"stopped: {verdict}"[:OUTPUT_MAX]
             outputs += [words] * (len(word) - len(outputs))
