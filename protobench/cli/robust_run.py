@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import itertools
 import json
 import shlex
@@ -16,7 +17,7 @@ from rich.console import Console
 
 from protobench.cli.cautions import CAUTIONS
 from protobench.cli.check import BENCH_FAILED, FAILED, WRONG_USE
-from protobench.judge import Failed
+from protobench.judge import CaseVerdict, Failed
 from protobench.links import BadAddress, ImpairedLink, LinkError, NoVirtualTime
 from protobench.suite.bench import NoModule
 from protobench.suite.options import RunOptions
@@ -24,6 +25,7 @@ from protobench.suite.robust.again import read_again, write_again
 from protobench.suite.robust.campaign import Campaign, Failure
 from protobench.suite.robust.steps import Step
 from protobench.suite.session import NeedsAttendance, Session
+from protobench.suite.tools import same_groups_after
 
 PROGRESS_S = 2.0
 
@@ -109,11 +111,13 @@ def _play(
     begin = time.monotonic()
     indices: Iterator[int] = itertools.count() if count is None else iter(range(count))
     try:
-        if steps is not None:
-            campaign.once(steps)
-        else:
-            until_s = None if budget_s is None else begin + budget_s
-            campaign.run(indices, until_s, _Progress(console, count))
+        # A module that cannot be brought back to its groups has failed a sequence already.
+        with contextlib.suppress(CaseVerdict), same_groups_after(session.bench):
+            if steps is not None:
+                campaign.once(steps)
+            else:
+                until_s = None if budget_s is None else begin + budget_s
+                campaign.run(indices, until_s, _Progress(console, count))
     except KeyboardInterrupt:
         interrupted = True
         session.halt()

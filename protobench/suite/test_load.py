@@ -9,7 +9,7 @@ from protobench.suite.language import canonical
 from protobench.suite.robust.campaign import play_counted
 from protobench.suite.robust.player import Tally
 from protobench.suite.robust.steps import Grammar
-from protobench.suite.tools import garbage_blocks
+from protobench.suite.tools import garbage_blocks, same_groups_after
 
 FLOOD = 400
 
@@ -179,12 +179,13 @@ def test_generated(bench: Bench) -> None:
     seed = bench.rng.randrange(1 << 32)
     is_virtual = bench.facts.has("virtual")
     end_ns = bench.port.now_ns + GENERATED_REAL_MS * 1_000_000
-    for index in range(GENERATED):
-        if index:
-            bench.end()
-        play_counted(bench, grammar.sequence(seed, index), Tally())
-        if not is_virtual and bench.port.now_ns > end_ns:
-            break
+    with same_groups_after(bench):
+        for index in range(GENERATED):
+            if index:
+                bench.end()
+            play_counted(bench, grammar.sequence(seed, index), Tally())
+            if not is_virtual and bench.port.now_ns > end_ns:
+                break
 
 
 GENERATED = 40  # sequences in virtual time

@@ -13,6 +13,21 @@ SATURATION = 65535
 BINARY_MAX = 32
 
 
+@contextmanager
+def same_groups_after(bench: Bench) -> Iterator[None]:
+    """Whatever groups the module is given inside, it is afterwards in those that it was in before."""
+    if not bench.facts.has("groups"):
+        yield
+        return
+    before = list(bench.a.read("read-groups")["groups"])
+    yield
+    bench.end()
+    keeper = bench.tester()
+    keeper.take_lease()
+    keeper.accepted("set-groups", groups=before, clause="ADR-13")
+    keeper.accepted("release-lease", clause="LSE-11")
+
+
 def filler_body(size: int) -> bytes:
     """A canonical map of exactly ``size`` bytes, 1 to 229, of keys that no read knows and all may ignore."""
     rest = size - 1
