@@ -16,7 +16,7 @@ from aalpy.base import SUL, Oracle
 from aalpy.learning_algs import run_Lsharp
 
 from protobench.suite.machines.asking import Asker, BudgetSpent, Corrected, NotRepeatable
-from protobench.suite.machines.derive import derive
+from protobench.suite.machines.derive import derive, small_characterisation
 from protobench.suite.machines.mealy import Mealy, Word
 
 SAME, DIFFERS, UNDECIDED = "same", "differs", "undecided"
@@ -31,11 +31,13 @@ class Effort:
     """How far learning goes.
 
     ``states``: the most states that the module is taken to have, for the W-method; None: random words instead, drawn by
-    ``seed``, and the first difference is enough.
+    ``seed``, and the first difference is enough. ``read``: an input that tells most of the state; where the alphabet
+    has it, the W-method looks with it behind every transition, so that more than the promised modules are found.
     """
 
     states: int | None
     seed: int = 1
+    read: str = "A.status"
 
 
 @dataclass(slots=True)
@@ -139,8 +141,11 @@ class _Run:
                 yield tuple(rng.choice(self.contract.inputs) for _ in range(RANDOM_LENGTH))
             return
         extra = max(0, self._effort.states - len(hypothesis.states))
+        words = small_characterisation(hypothesis) if len(hypothesis.states) > 1 else ()
+        if self._effort.read in hypothesis.inputs:
+            words = tuple(dict.fromkeys([*words, (self._effort.read,)]))
         for deeper in range(extra + 1):
-            yield from derive(hypothesis, "W", deeper)
+            yield from derive(hypothesis, "W", deeper, words or None)
 
 
 def learn(contract: Mealy, asker: Asker, effort: Effort, growing: Growing = lambda _: None) -> Learned:
