@@ -40,7 +40,7 @@ STATUS = {
     learner.DIFFERS: check.FAILED,
     learner.UNDECIDED: check.INCONCLUSIVE,
 }
-TELL_EVERY_S = 2.0
+LIVE_EVERY_S, PLAIN_EVERY_S = 0.5, 10.0
 DOT_LIMIT_S = 60.0
 
 
@@ -71,7 +71,8 @@ class _Progress:
 
     def asked(self, queries: int) -> None:
         self._queries = queries
-        if (now := time.monotonic()) - self._last >= TELL_EVERY_S:
+        every_s = LIVE_EVERY_S if self._console.is_terminal else PLAIN_EVERY_S
+        if (now := time.monotonic()) - self._last >= every_s:
             self._last = now
             self._tell()
 
