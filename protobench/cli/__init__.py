@@ -9,7 +9,7 @@ import structlog
 import typer
 
 from protobench import __version__
-from protobench.cli import check, contract, decode, emulate, ics, learn, robustness, states
+from protobench.cli import check, contract, decode, emulate, ics, learn, robustness, soak, states
 
 app = typer.Typer(
     name="protobench",
@@ -25,6 +25,7 @@ app.command("states")(states.states)
 app.command("learn")(learn.learn)
 app.command("decode")(decode.decode)
 app.command("robustness")(robustness.robustness)
+app.command("soak")(soak.soak)
 app.add_typer(contract.app, name="contract")
 app.add_typer(ics.app, name="ics")
 
