@@ -47,7 +47,9 @@ class CaseRecord:
     ``detail`` holds readable lines on what was sent, expected and received; ``replay`` is the command
     that runs this case again the same way; ``broken`` holds the clauses that its failures name, in the order they
     were seen, an empty string for one that names none; ``exchange`` is what passed up to the verdict, for a case
-    that did not pass; ``measurements`` what was measured, whatever the verdict.
+    that did not pass, and ``ended_ns`` when that was, on the exchange's clock; ``measurements`` what was measured,
+    whatever the verdict; ``script`` the path of a script that replays the failure, ``shown_by`` who says so: one of
+    ``watch``, ``model``, ``twin``, ``link``, ``case``; ``unrepeated`` what came instead where it did not repeat.
     """
 
     id: str
@@ -63,6 +65,10 @@ class CaseRecord:
     broken: tuple[str, ...] = ()
     exchange: Sequence[Exchange] = ()
     measurements: Sequence[Measurement] = ()
+    ended_ns: int = 0
+    script: str = ""
+    shown_by: str = ""
+    unrepeated: str = ""
 
 
 @dataclass(frozen=True, slots=True)

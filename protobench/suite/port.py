@@ -122,6 +122,11 @@ class Port:
         return self.link.clock.now_ns()
 
     @property
+    def passed_ns(self) -> int:
+        """Time since the case began."""
+        return self.now_ns - self._begin_ns
+
+    @property
     def u_ms(self) -> float:
         """Expanded uncertainty of an interval in ms: by how late own waits ended, none in virtual time.
 
@@ -179,7 +184,7 @@ class Port:
         else:
             unit = data
         time_ns = self._send_units(unit)
-        self._record("->", time_ns, data, "raw bytes")
+        self._record("->", time_ns, data, "raw bytes" if lead else "raw bytes, continued")
         for frame in self.language.split(data):
             self.note_sent(frame, self.language.read(frame), time_ns)
         return time_ns

@@ -52,13 +52,15 @@ class Judged(NamedTuple):
     reason: str = ""
     detail: str = ""
     exchange: Sequence[Exchange] = ()
+    ended_ns: int = 0
 
 
 class Passed(NamedTuple):
-    """The last of what passed in a case, of so many frames in all."""
+    """The last of what passed in a case, of so many frames in all, up to a time since the case began."""
 
     exchange: Sequence[Exchange]
     total: int
+    ended_ns: int
 
 
 class NeedsAttendance(Exception):  # noqa: N818 - says what is missing
@@ -209,6 +211,7 @@ class Session:
             replay="" if judged.verdict in ("pass", NOT_APPLICABLE) else self._replay(info),
             broken=tuple(finding.clause for finding in found if finding.verdict is Verdict.FAIL),
             exchange=judged.exchange,
+            ended_ns=judged.ended_ns,
         )
 
     def _verdict(self, info: CaseInfo, found: list[Finding]) -> Judged:
@@ -237,13 +240,16 @@ class Session:
             found.append(Finding(Verdict.FAIL, f"LOD-02: the link to the module ended: {error}", "LOD-02"))
             passed = self._passed()
             self._reopen()
-            return Judged(Verdict.FAIL.word, found[0].reason, _detail(passed), passed.exchange)
+            return Judged(
+                Verdict.FAIL.word, found[0].reason, _detail(passed), passed.exchange, passed.ended_ns
+            )
         if not found:
             return Judged(Verdict.PASS.word)
         worst = max(finding.verdict for finding in found)
         reasons = [finding.reason for finding in found if finding.verdict is worst]
         passed = passed or self._passed()
-        return Judged(worst.word, reasons[0], _detail(passed, reasons[1:]), passed.exchange)
+        detail = _detail(passed, reasons[1:])
+        return Judged(worst.word, reasons[0], detail, passed.exchange, passed.ended_ns)
 
     def _attempt(self, step: Any, found: list[Finding], prefix: str = "") -> None:
         try:
@@ -265,7 +271,8 @@ class Session:
         most = None if self._kept < EXCHANGE_RUN_MAX else EXCHANGE_LEAST
         kept = port.exchange(until, most) or port.exchange(None, most)
         self._kept += len(kept)
-        return Passed(kept, port.events_seen if until is None else until)
+        ended_ns = port.passed_ns if until is None or not kept else kept[-1].time_ns
+        return Passed(kept, port.events_seen if until is None else until, ended_ns)
 
     def _reopen(self) -> None:
         """The far end went away: the next case gets a new link. What cannot be opened again ends the run."""

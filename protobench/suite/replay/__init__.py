@@ -1,0 +1,1 @@
+"""Failures made short, and written as scripts that replay them."""
