@@ -11,7 +11,7 @@ from dataclasses import replace
 from typing import Any
 
 from protobench.judge import Exchange
-from protobench.suite.language import Language, Reading
+from protobench.suite.language import Language, Reading, canonical
 from protobench.suite.replay.recorder import Now, Passed
 from protobench.suite.replay.steps import (
     MODULUS,
@@ -168,15 +168,17 @@ class Lifter:
             body_length=size,
         )
 
-    def _body(self, reading: Reading, frame: Frame) -> tuple[tuple[tuple[str | int, Any], ...], bytes | None]:
+    def _body(
+        self, reading: Reading, frame: Frame
+    ) -> tuple[tuple[tuple[str | int, Any], ...], tuple[bytes | Told, ...] | None]:
         """Fields that make the very body again, or the body."""
         if reading.kind.startswith("0x"):
-            return (), frame.body
+            return (), (frame.body,)
         values: dict[Any, Any] | None = dict(reading.fields or {})
         if values is None or reading.fields is None or not self._makes(reading.kind, values, frame.body):
             values = self._plain(reading.kind, frame.body)
         if values is None:
-            return (), frame.body
+            return (), self._parts(frame.body)
         return tuple((name, self._lifted(name, value)) for name, value in values.items()), None
 
     def _plain(self, kind: str, body: bytes) -> dict[str | int, Any] | None:
@@ -184,9 +186,33 @@ class Lifter:
             found = self.language.codec.unpack_body(body)
         except WireError:
             return None
-        names = {key: name for name, key in self.language.keys(kind).items()}
-        values: dict[str | int, Any] = {names.get(key, key): value for key, value in found.items()}
+        if any(isinstance(value, dict | list) and not _is_flat(value) for value in found.values()):
+            return None
+        specs = {spec.key: spec for spec in self.language.contract.kind(kind).fields}
+        values: dict[str | int, Any] = {}
+        for key, value in found.items():
+            spec = specs.get(key)
+            values[key if spec is None else spec.name] = value
+            if spec is not None and spec.enum is not None and type(value) is int:
+                names = {
+                    number: name for name, number in self.language.contract.enum_values(spec.enum).items()
+                }
+                values[spec.name] = names.get(value, value)
         return values if self._makes(kind, values, body) else None
+
+    def _parts(self, body: bytes) -> tuple[bytes | Told, ...]:
+        """A body of no sound form, with the epoch and the lease number that it begins with as told values."""
+        if not body or not 0x80 <= body[0] <= 0x8F:
+            return (body,)
+        parts: list[bytes | Told] = []
+        begin, place = 0, 1
+        for key, name in enumerate(("epoch", "lease")):
+            value = bytes([key]) + canonical(int(getattr(self._now, name)))
+            if not body.startswith(value, place):
+                break
+            parts += [body[begin : place + 1], Told(name)]
+            begin = place = place + len(value)
+        return (*parts, body[begin:])
 
     def _makes(self, kind: str, values: dict[str | int, Any], body: bytes) -> bool:
         try:
@@ -248,6 +274,10 @@ def _relative(name: str, value: int, base: int) -> Any:
     return value if far or not 0 <= value < MODULUS or value in (0, MODULUS - 1) else Told(name, plus)
 
 
+def _is_flat(value: Any) -> bool:
+    return isinstance(value, list) and not any(isinstance(item, dict | list) for item in value)
+
+
 def _signed(number: int) -> int:
     number %= MODULUS
     return number - MODULUS if number >= MODULUS // 2 else number
@@ -262,11 +292,17 @@ def _name(place: int) -> str:
 
 
 def frames_of(exchange: Iterable[Exchange], language: Language) -> Iterator[Passed]:
-    """The sound frames of an exchange, those inside raw bytes too."""
+    """The sound frames of an exchange, those inside raw bytes too, with the last of their pieces."""
+    decoder = language.stream_decoder()
     for passed in exchange:
         is_sent = passed.direction == "->"
-        raw = is_sent and passed.words.startswith("raw bytes")
-        for data in language.split(passed.data) if raw else [passed.data]:
+        found = [passed.data]
+        if is_sent and passed.words.startswith("raw bytes"):
+            found = language.split(passed.data)
+            lead = b"" if "continued" in passed.words else b"\0"
+            pieces = decoder.feed(lead + passed.data, passed.time_ns)
+            found += [unit for unit in pieces if isinstance(unit, bytes) and unit not in found]
+        for data in found:
             reading = language.read(data)
             if reading.frame is not None:
                 yield Passed(passed.time_ns, is_sent, data, reading)

@@ -12,6 +12,7 @@ from collections.abc import Sequence as Listed
 from itertools import pairwise
 from typing import Any, NamedTuple
 
+from protobench.suite.bench import Bench
 from protobench.suite.facts import Facts
 from protobench.suite.replay.recorder import Passed
 from protobench.suite.replay.steps import MODULUS
@@ -86,6 +87,16 @@ class Later(NamedTuple):
         return str(self.value)
 
 
+class Shown(NamedTuple):
+    """The state that a module displays, and of what."""
+
+    of: tuple[object, ...]
+    state: str
+
+    def __str__(self) -> str:
+        return f"{self.state} with activity, halt latch, fault latch {self.of}"
+
+
 class Seen(NamedTuple):
     """One thing observed: ``about`` what, its fields, how many frames had been sent by then, and when.
 
@@ -126,6 +137,8 @@ def same(one: object, other: object) -> bool:
         return one.agrees(other)
     if isinstance(one, Later) and isinstance(other, Later):
         return not (one.rests and other.rests) or same(one.value, other.value)
+    if isinstance(one, Shown) and isinstance(other, Shown):
+        return one.of != other.of or one.state == other.state
     if isinstance(one, tuple) and isinstance(other, tuple) and not isinstance(one, About):
         return len(one) == len(other) and all(map(same, one, other))
     return bool(one == other)
@@ -333,6 +346,11 @@ class Observer:
             return None
         return self._later(name, "as before" if value == before else "changed", passed)
 
+    def _state(self, name: str, value: Any, passed: Passed) -> Any:
+        told = passed.reading.fields or {}
+        of = tuple(told.get(word) for word in ("activity", "halt_latch", "fault_latch"))
+        return {name: self._later(name, value, passed), "display": Shown(of, value)}
+
     def _later(self, name: str, value: Any, passed: Passed) -> Any:  # noqa: ARG002
         moving = (passed.reading.fields or {}).get("activity") in ("moving", "starting")
         return Later(value, not moving and passed.time_ns - self._busy_ns > SETTLED_NS)
@@ -436,7 +454,7 @@ _COMMON: dict[str, How] = {
 _KINDS: dict[str, dict[str, How]] = {
     "status-report": {
         "faces": Observer._bonds, "queued": Observer._later, "scheduled": Observer._later,
-        "unconfirmed": Observer._later, "activity": Observer._later, "state": Observer._later,
+        "unconfirmed": Observer._later, "activity": Observer._later, "state": Observer._state,
         "position_known": Observer._known,
     },
     "counters": {"drops": Observer._since_first, "silent_refusals": Observer._since_first},
@@ -451,3 +469,10 @@ _KINDS: dict[str, dict[str, How]] = {
     "log": {"text": _SKIP},
 }  # fmt: skip
 _EVENTS = ("outcome", "fault", "started", "telemetry")
+
+
+def observer(bench: Bench) -> Observer:
+    """One for the module of a bench."""
+    contract = bench.contract
+    drops = [drop.name for drop in sorted(contract.drops, key=lambda drop: drop.number)]
+    return Observer(bench.facts, contract.kind_range("answer"), drops)

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from typing import Protocol
 
 from protobench.suite.replay.observe import Place, Seen, same
-from protobench.suite.replay.trial import Difference, Trial, differences, shape
+from protobench.suite.replay.trial import Difference, Trial, differences, numberless, shape
 from protobench.suite.watch import Violation
 
 WATCH, MODEL, TWIN, LINK, CASE = "watch", "model", "twin", "link", "case"
@@ -100,7 +100,7 @@ class Ends:
     name: str = LINK
 
     def suspects(self, module: Trial) -> bool:
-        return module.ended == self.words
+        return numberless(module.ended) == numberless(self.words)
 
     def shows(self, module: Trial, twin: Trial) -> bool:
         return self.suspects(module) and not twin.ended

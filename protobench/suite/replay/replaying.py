@@ -8,8 +8,10 @@ from typing import Any
 from protobench.judge import CaseVerdict
 from protobench.links import LinkError
 from protobench.suite.bench import Bench
+from protobench.suite.language import canonical
 from protobench.suite.model import Model
 from protobench.suite.port import Received, Sent
+from protobench.suite.replay.observe import Place, Seen, observer
 from protobench.suite.replay.recorder import Now, Passed, Recorder
 from protobench.suite.replay.steps import Controller, Raw, Send, Sequence, Step, Told, Until, Wait
 from protobench.suite.tester import MODULUS, Tester
@@ -118,6 +120,11 @@ class Replay:
                 return None  # it has come already
         return self.port.wait_for(lambda received: received.kind == kind, within_ms)
 
+    def seen(self) -> dict[Place, Seen]:
+        """What the module did since the start, without what may differ from one sound module to the next."""
+        frames = self.frames
+        return observer(self.bench).observe(self.before, frames, self.port.now_ns)[0]
+
     def violations(self) -> list[Violation]:
         """What the watch and then the model of the contract found, up to now."""
         return [*self.watched(), *self.modelled()]
@@ -208,8 +215,11 @@ class Player:
             self.replay.answer(sent)
 
     def _frame(self, tester: Tester, step: Send) -> bytes:
-        body = step.body
-        if body is None:
+        if step.body is not None:
+            body = b"".join(
+                part if isinstance(part, bytes) else canonical(self._value(part)) for part in step.body
+            )
+        else:
             assert isinstance(step.kind, str)
             fields = {name: self._value(value) for name, value in step.fields}
             body = self.bench.language.body(step.kind, fields)

@@ -14,11 +14,11 @@ from protobench.suite.facts import Facts
 from protobench.suite.language import Language
 from protobench.suite.replay.ddmin import ddmin
 from protobench.suite.replay.lift import Lifter, frames_of
-from protobench.suite.replay.observe import Place, Seen
+from protobench.suite.replay.observe import Place, Seen, observer
 from protobench.suite.replay.oracle import CASE, Differs, Oracle, candidates
 from protobench.suite.replay.steps import Send, Sequence, Step, Until, Wait
 from protobench.suite.replay.subject import Subject
-from protobench.suite.replay.trial import Difference, Trial, Twin, observe
+from protobench.suite.replay.trial import Difference, Trial, Twin
 from protobench.suite.watch import Violation
 
 CANDIDATES_MOST = 4
@@ -145,7 +145,7 @@ class _Work:
 
     def _recorded(self, record: CaseRecord) -> dict[Place, Seen]:
         frames = list(frames_of(record.exchange, self.shrinker.language))
-        return observe(self.subject.session.bench, [], frames, record.ended_ns)[0]
+        return observer(self.subject.session.bench).observe([], frames, record.ended_ns)[0]
 
     def _by(self, oracle: Oracle, record: CaseRecord, sequence: Sequence) -> Shrunk | None:
         """Shrink by one oracle; None where what is left does not show it on a new module."""

@@ -37,7 +37,8 @@ class Controller(NamedTuple):
 
 @dataclass(frozen=True, slots=True)
 class Send:
-    """One frame. ``to``: None for the module. ``fields``: by name or key, in order; ``body``: bytes instead.
+    """One frame. ``to``: None for the module. ``fields``: by name or key, in order; ``body``: bytes instead, with told
+    values among them.
 
     ``again``: the very bytes of the frame that was sent before with this number. ``awaits``: its answer is waited for.
     """
@@ -49,7 +50,7 @@ class Send:
     to: int | None = None
     flags: int = 0
     version: int | None = None
-    body: bytes | None = None
+    body: tuple[bytes | Told, ...] | None = None
     body_length: int | None = None
     again: bool = False
     awaits: bool = False

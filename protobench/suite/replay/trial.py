@@ -12,7 +12,7 @@ from protobench.links import LinkError
 from protobench.suite.bench import Bench
 from protobench.suite.facts import Facts
 from protobench.suite.options import RunOptions
-from protobench.suite.replay.observe import OPEN, Observer, Place, Seen, relation, same
+from protobench.suite.replay.observe import OPEN, Place, Seen, observer, relation, same
 from protobench.suite.replay.recorder import Passed
 from protobench.suite.replay.replaying import Player, Replay
 from protobench.suite.replay.steps import Sequence
@@ -50,7 +50,7 @@ def play(bench: Bench, sequence: Sequence) -> Trial:
             trial.ended = Player(replay, sequence).play()
             trial.watched = replay.watched()
             trial.frames = replay.frames
-            trial.seen, trial.end_ms = observe(bench, replay.before, trial.frames, bench.port.now_ns)
+            trial.seen, trial.end_ms = observer(bench).observe(replay.before, trial.frames, bench.port.now_ns)
             if not trial.ended:
                 trial.modelled = replay.modelled()
     except CaseVerdict as verdict:
@@ -58,15 +58,6 @@ def play(bench: Bench, sequence: Sequence) -> Trial:
     except LinkError as error:
         trial.ended = trial.ended or f"the link to the module ended: {type(error).__name__}"
     return trial
-
-
-def observe(
-    bench: Bench, before: list[Passed], frames: list[Passed], end_ns: int
-) -> tuple[dict[Place, Seen], float]:
-    """What is seen in frames of this bench's module up to a time, and that time in ms."""
-    contract = bench.contract
-    drops = [drop.name for drop in sorted(contract.drops, key=lambda drop: drop.number)]
-    return Observer(bench.facts, contract.kind_range("answer"), drops).observe(before, frames, end_ns)
 
 
 class Twin:
@@ -150,4 +141,9 @@ _NUMBERS = re.compile(r"0x[0-9a-f]+|\b[0-9a-f]{8}\b|\d+(\.\d+)?")
 def shape(violation: Violation) -> tuple[str, str]:
     """A violation without the numbers of one play."""
     text = violation.reason.partition("{")[0]
-    return violation.clause, _NUMBERS.sub("N", text)
+    return violation.clause, numberless(text)
+
+
+def numberless(text: str) -> str:
+    """A text without its numbers."""
+    return _NUMBERS.sub("N", text)
